@@ -1,0 +1,357 @@
+"""The chain itself: one block of sources in, luminosities, fluxes and verdicts out.
+
+Pure: no files, no printing, no random numbers. The same object serves a table in memory, a
+streamed file and a worker on a cluster; each row's result depends on that row alone, so neither
+the block size nor the number of threads can change it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from functools import cached_property
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from embersift.arrays import Array, Mask
+from embersift.bands import HARD, SOFT
+from embersift.catalogue import Sources
+from embersift.columns import fate_column
+from embersift.constants import EDDINGTON_PER_MSUN, MPC, RATE_TO_LUMINOSITY
+from embersift.host import Background, HostLight
+from embersift.interpolation import UniformCubic
+from embersift.laws import accretion_law, bolometric_law
+from embersift.laws.accretion import isco_efficiency
+from embersift.laws.conversions import inflow_from_growth
+from embersift.laws.declaration import Coefficients, Disc, Law
+from embersift.errors import LawError
+from embersift.problems import UNUSABLE, Bits
+from embersift.recipe import Observation, Recipe
+from embersift.sky.absorption import power_law_transmission
+from embersift.sky.spectrum import GasSpectrum, power_law_ratio
+from embersift.verdict import judge_thresholds
+
+__all__ = ["CHUNK", "Chain", "Fluxes", "Luminosities", "Screened"]
+
+CHUNK = 32768
+"""Rows per step: below this, two threads spend their time handing over the interpreter lock."""
+
+
+class Luminosities(NamedTuple):
+    """Intrinsic light of a block at rest, 2-10 keV unless said otherwise [erg/s]."""
+
+    lbol: Array
+    eddington_ratio: Array
+    lx_agn: Array
+    lx_hmxb: Array
+    lx_lmxb: Array
+    lx_gas: Array
+    lx_background: Array
+    excess: Array
+
+
+class Fluxes(NamedTuple):
+    """What one observation receives [erg/s/cm2]."""
+
+    agn: Array
+    background: Array
+    excess: Array
+
+
+class Screened(NamedTuple):
+    """Everything a block gives back; arrays of the block's length.
+
+    `stretched` has bit i set where ``Chain.laws[i]`` was used outside its range.
+    """
+
+    luminosities: Luminosities
+    fluxes: Mapping[str, Fluxes]
+    fates: Mapping[str, NDArray[np.int8]]
+    stretched: NDArray[np.uint32]
+    problems: Bits
+
+
+@dataclass(frozen=True)
+class _View:
+    """One observation, with everything that does not depend on the row worked out."""
+
+    observation: Observation
+    agn_share: float  # L(observed band) / L(2-10 keV) of the black hole's power law, at rest
+    binaries_share: float
+    binaries_passed: float  # what the Galactic column leaves of the binaries' power law
+    agn_passed: float
+    gas_log_share: UniformCubic | None
+
+
+class Chain:
+    """A recipe made ready to run.
+
+    Parameters
+    ----------
+    recipe : Recipe
+        Every choice of the run.
+
+    Raises
+    ------
+    LawError
+        A law is unknown, lacks what the recipe asks of it, or is counted twice.
+
+    Attributes
+    ----------
+    laws : tuple of Law
+        The laws in use, in the order of the chain; bit i of `Screened.stretched` is law i.
+    """
+
+    def __init__(self, recipe: Recipe) -> None:
+        self.recipe = recipe
+        agn = recipe.agn
+        self._accretion = accretion_law(agn.accretion)
+        self._disc = Disc(efficiency=agn.efficiency, spin=agn.spin, delta=agn.delta)
+        # fail before the first row when the spin or the heating share does not exist
+        self._accretion.eddington_ratio(np.array([1.0]), self._disc)
+        self._bolometric = bolometric_law(agn.bolometric)
+        self._bolometric_values = self._correction_values()
+        self._anchor = (
+            1.0 if agn.anchor == "hard" else power_law_ratio(agn.gamma, HARD, SOFT)
+        )
+        self._growth_efficiency = (
+            isco_efficiency(agn.spin) if agn.accretion == "isco" else agn.efficiency
+        )
+        self._background = Background(recipe)
+        self.laws: tuple[Law, ...] = (
+            self._accretion,
+            self._bolometric,
+            *self._background.laws,
+        )
+        # by kind and name: accretion and bolometric laws share the name constant
+        self._bits = {(law.kind, law.name): np.uint32(1 << i) for i, law in enumerate(self.laws)}
+        self._gas = GasSpectrum(
+            (recipe.background.gas_kt[0], recipe.background.gas_kt[1]),
+            recipe.background.gas_hot_share,
+        )
+        self._views = tuple(self._view(o) for o in recipe.observation)
+
+    def _correction_values(self) -> Coefficients:
+        agn = self.recipe.agn
+        if agn.bolometric == "constant":
+            if agn.k is None:
+                raise LawError(
+                    "agn.bolometric = 'constant' needs agn.k = L_bol / L(2-10 keV); "
+                    "8 to 50 are in use for faint nuclei (embersift laws lopez2024)."
+                )
+            return {"k": agn.k}
+        return (
+            self._bolometric.values if agn.anchor == "hard" else self._bolometric.soft_values
+        )
+
+    def _view(self, observation: Observation) -> _View:
+        agn, binaries = self.recipe.agn.gamma, self.recipe.background.gamma
+        band, column = observation.band, observation.galactic_nh
+        none = np.zeros(1)
+        return _View(
+            observation=observation,
+            agn_share=power_law_ratio(agn, band, HARD),
+            binaries_share=power_law_ratio(binaries, band, HARD),
+            binaries_passed=float(power_law_transmission(binaries, band, column, none, none)[0]),
+            agn_passed=float(power_law_transmission(agn, band, column, none, none)[0]),
+            gas_log_share=(
+                self._gas.observed_share(band, column) if self._background.has_gas else None
+            ),
+        )
+
+    @cached_property
+    def stretched_words(self) -> tuple[str, ...]:
+        """Law names by bit of `Screened.stretched`."""
+        return tuple(law.name for law in self.laws)
+
+    @property
+    def fate_columns(self) -> tuple[str, ...]:
+        return tuple(
+            fate_column(o.name, t)
+            for o in self.recipe.observation
+            for t in self.recipe.screen.thresholds
+        )
+
+    # --- one step of the chain each ---------------------------------------------------------
+
+    def accretion(self, sources: Sources) -> tuple[Array, Array, Array]:
+        """Bolometric luminosity [erg/s], Eddington ratio, and inflow in units of L_Edd/c2."""
+        mdot = sources.mdot
+        if self.recipe.catalogue.rate == "growth":
+            mdot = inflow_from_growth(mdot, self._growth_efficiency)
+        eddington = sources.mbh * EDDINGTON_PER_MSUN
+        with np.errstate(divide="ignore", invalid="ignore"):
+            rate = mdot * RATE_TO_LUMINOSITY / eddington
+            rate[sources.mbh == 0.0] = np.nan
+            ratio = self._accretion.eddington_ratio(rate, self._disc)
+        return ratio * eddington, ratio, rate
+
+    def agn_light(self, lbol: Array, ratio: Array, mbh: Array) -> Array:
+        """Intrinsic L(2-10 keV) of the black hole [erg/s]."""
+        with np.errstate(divide="ignore", invalid="ignore"):
+            k = self._bolometric.formula(lbol, ratio, mbh, self._bolometric_values)
+            lx = lbol / k
+        return lx if self._anchor == 1.0 else lx * self._anchor
+
+    def host_light(self, sources: Sources) -> HostLight:
+        """The host's own L(2-10 keV), by part [erg/s]."""
+        return self._background.light(sources)
+
+    def fluxes(
+        self, view: _View, sources: Sources, lx_agn: Array, host: HostLight, u: Array, area: Array
+    ) -> Fluxes:
+        """What one observation receives of the black hole and of its host."""
+        agn_gamma, gamma = self.recipe.agn.gamma, self.recipe.background.gamma
+        agn = lx_agn * view.agn_share
+        agn *= np.exp((agn_gamma - 2.0) * u)
+        hidden = sources.nh > 0.0
+        if hidden.any():
+            passed = np.full(u.shape, view.agn_passed)
+            passed[hidden] = power_law_transmission(
+                agn_gamma,
+                view.observation.band,
+                view.observation.galactic_nh,
+                sources.nh[hidden],
+                sources.z[hidden],
+            )
+            agn *= passed
+        elif view.agn_passed != 1.0:
+            agn *= view.agn_passed
+        agn /= area
+        # NaN columns (an nh that is no number) must not look unabsorbed
+        agn[np.isnan(sources.nh)] = np.nan
+        background = host.point_like * (view.binaries_share * view.binaries_passed)
+        background *= np.exp((gamma - 2.0) * u)
+        if view.gas_log_share is not None:
+            background += host.gas_soft * np.exp(view.gas_log_share(u))
+        background /= area
+        with np.errstate(divide="ignore", invalid="ignore"):
+            excess = agn / background
+        excess[(agn == 0.0) & (background == 0.0)] = 0.0
+        if self.recipe.screen.criterion == "total":
+            excess += 1.0
+        return Fluxes(agn, background, excess)
+
+    def stretched(
+        self, sources: Sources, lbol: Array, ratio: Array, rate: Array
+    ) -> NDArray[np.uint32]:
+        """Which laws were used outside their calibrated ranges, as bits."""
+        marks = np.zeros(lbol.shape, dtype=np.uint32)
+        accreting = lbol > 0.0
+        spans = {
+            "lbol": lbol,
+            "eddington_ratio": ratio,
+            "mbh": sources.mbh,
+            "mdot": rate,
+            "spin": np.asarray(self._disc.spin),
+        }
+        with np.errstate(invalid="ignore"):
+            for law in (self._accretion, self._bolometric):
+                marks[law.stretched(**spans) & accreting] |= self._bits[law.kind, law.name]
+            for law, mark in self._background.stretched(sources):
+                marks[mark] |= self._bits[law.kind, law.name]
+        return marks
+
+    # --- whole blocks -----------------------------------------------------------------------
+
+    def run_block(self, sources: Sources) -> Screened:
+        """The whole chain on one block, in one step."""
+        lbol, ratio, rate = self.accretion(sources)
+        lx_agn = self.agn_light(lbol, ratio, sources.mbh)
+        host = self.host_light(sources)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            excess = lx_agn / host.background
+        usable = (sources.problems & UNUSABLE) == 0
+        has_hole = sources.mbh > 0.0
+        accreting = sources.mdot > 0.0
+        u = np.log1p(sources.z)
+        area = sources.distance * MPC
+        area *= area
+        area *= 4.0 * np.pi
+        fluxes: dict[str, Fluxes] = {}
+        fates: dict[str, NDArray[np.int8]] = {}
+        screen = self.recipe.screen
+        for view in self._views:
+            seen = self.fluxes(view, sources, lx_agn, host, u, area)
+            name = view.observation.name
+            fluxes[name] = seen
+            verdicts = judge_thresholds(
+                usable=usable,
+                has_hole=has_hole,
+                accreting=accreting,
+                flux_counted=seen.agn if screen.flux_of == "agn" else seen.agn + seen.background,
+                flux_limit=view.observation.flux_limit,
+                lx_agn=lx_agn,
+                floor=screen.floor,
+                excess=seen.excess,
+                thresholds=screen.thresholds,
+            )
+            for threshold, codes in zip(screen.thresholds, verdicts, strict=True):
+                fates[fate_column(name, threshold)] = codes
+        return Screened(
+            luminosities=Luminosities(
+                lbol, ratio, lx_agn, host.hmxb, host.lmxb, host.gas, host.background, excess
+            ),
+            fluxes=fluxes,
+            fates=fates,
+            stretched=self.stretched(sources, lbol, ratio, rate),
+            problems=sources.problems,
+        )
+
+    def run(self, sources: Sources, *, threads: int = 2, chunk: int = CHUNK) -> Screened:
+        """The whole chain on a table of any length, in chunks that fit the cache.
+
+        Parameters
+        ----------
+        sources : Sources
+            Arrays of one length.
+        threads : int
+            Threads that share the chunks; the result is the same for any number.
+        chunk : int
+            Rows per chunk; the result is the same for any number.
+        """
+        rows = sources.mstar.size
+        result = self._empty(rows)
+
+        def step(start: int) -> None:
+            part = slice(start, min(start + chunk, rows))
+            _store(self.run_block(sources.rows(part)), result, part)
+
+        starts = range(0, rows, chunk)
+        if threads < 2 or len(starts) < 2:
+            for start in starts:
+                step(start)
+        else:
+            with ThreadPoolExecutor(threads) as pool:
+                for _ in pool.map(step, starts):
+                    pass
+        return result
+
+    def _empty(self, rows: int) -> Screened:
+        return Screened(
+            luminosities=Luminosities(*(np.empty(rows) for _ in Luminosities._fields)),
+            fluxes={
+                o.name: Fluxes(*(np.empty(rows) for _ in Fluxes._fields))
+                for o in self.recipe.observation
+            },
+            fates={name: np.empty(rows, dtype=np.int8) for name in self.fate_columns},
+            stretched=np.empty(rows, dtype=np.uint32),
+            problems=np.empty(rows, dtype=np.uint64),
+        )
+
+
+def _arrays(screened: Screened) -> Iterator[NDArray[np.generic]]:
+    yield from screened.luminosities
+    for seen in screened.fluxes.values():
+        yield from seen
+    yield from screened.fates.values()
+    yield screened.stretched
+    yield screened.problems
+
+
+def _store(block: Screened, result: Screened, part: slice) -> None:
+    for source, target in zip(_arrays(block), _arrays(result), strict=True):
+        target[part] = source

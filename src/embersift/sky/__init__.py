@@ -1,0 +1,1 @@
+"""From the source to the observer: distance, bands, absorption, apertures."""
