@@ -1,5 +1,7 @@
 """Photoelectric absorption against element-by-element cross-sections and published values."""
 
+import itertools
+
 import numpy as np
 import pytest
 from scipy.integrate import quad
@@ -31,9 +33,7 @@ def test_cross_section_is_the_sum_over_the_elements_of_the_paper(energy, ratio):
     summed = 0.0
     for element, log_number in abundance.items():
         per_gram = xraydb.mu_elam(element, energy * 1e3, kind="photo")
-        summed += (
-            10 ** (log_number - 12.0) * per_gram * xraydb.atomic_mass(element) / 6.02214076e23
-        )
+        summed += 10 ** (log_number - 12.0) * per_gram * xraydb.atomic_mass(element) / 6.02214076e23
     measured = float(cross_section(np.array([energy]))[0]) / summed
     assert measured == pytest.approx(ratio, abs=0.004)
     assert measured == pytest.approx(1.0, abs=0.03)
@@ -86,8 +86,7 @@ def test_both_columns_together_equal_adaptive_quadrature(z):
     points = sorted({float(e) for e in [*EDGES, *(EDGES / (1 + z))] if band[0] < e < band[1]})
     bounds = [band[0], *points, band[1]]
     passed = sum(
-        quad(integrand, a, b, epsabs=0, epsrel=1e-10)[0]
-        for a, b in zip(bounds[:-1], bounds[1:], strict=True)
+        quad(integrand, a, b, epsabs=0, epsrel=1e-10)[0] for a, b in itertools.pairwise(bounds)
     )
     whole = quad(lambda e: e ** (1 - gamma), *band)[0]
     assert transmission(band, nh, z, gamma, galactic) == pytest.approx(passed / whole, rel=1e-8)

@@ -39,7 +39,9 @@ def catalogue(tmp_path):
 
 
 def test_screen_writes_its_columns_in_order_behind_the_input(catalogue):
-    result = run("screen", catalogue, "--limit", "deep=0.5-2:1e-16", "--threshold", 2, "--threshold", 2.5)
+    result = run(
+        "screen", catalogue, "--limit", "deep=0.5-2:1e-16", "--threshold", 2, "--threshold", 2.5
+    )
     written = Table.read(catalogue.with_name("dwarfs.screened.ecsv"))
     given = list(population(1, seed=3).columns)
     expected = [

@@ -36,7 +36,9 @@ def test_distances_agree_with_astropy():
 
     z = np.logspace(-3, 2.9, 400)
     reference = FlatLambdaCDM(H0=70, Om0=0.3, Tcmb0=0).luminosity_distance(z).value
-    np.testing.assert_allclose(FlatUniverse(70.0, 0.3).luminosity_distance(z), reference, rtol=5e-12)
+    np.testing.assert_allclose(
+        FlatUniverse(70.0, 0.3).luminosity_distance(z), reference, rtol=5e-12
+    )
 
 
 @pytest.mark.filterwarnings("ignore")

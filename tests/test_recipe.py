@@ -38,7 +38,12 @@ def test_commented_examples_of_the_starter_are_accepted():
         if line.startswith("["):
             section = line.strip("[]")
         name, equals, value = line.removeprefix("# ").partition(" = ")
-        if line.startswith("# ") and equals and section in SECTIONS and name in accepted_keys(SECTIONS[section]):
+        if (
+            line.startswith("# ")
+            and equals
+            and section in SECTIONS
+            and name in accepted_keys(SECTIONS[section])
+        ):
             Recipe.from_dict({section: {name: tomllib.loads(f"x = {value}")["x"]}})
 
 
@@ -65,7 +70,9 @@ def test_a_resolved_recipe_reads_back_to_itself():
     limit=st.floats(0, 1e-5),
     low=st.floats(0.03, 9.0),
     width=st.floats(0.01, 90.0),
-    thresholds=st.lists(st.floats(1e-3, 1e6), min_size=1, max_size=4, unique_by=lambda t: format(t, ".9g")),
+    thresholds=st.lists(
+        st.floats(1e-3, 1e6), min_size=1, max_size=4, unique_by=lambda t: format(t, ".9g")
+    ),
     text=st.text(min_size=1, max_size=30),
 )
 def test_any_accepted_recipe_survives_being_written(limit, low, width, thresholds, text):

@@ -1,5 +1,7 @@
 """Band conversions against published tables and numerical quadrature."""
 
+import itertools
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -41,7 +43,12 @@ def test_power_law_ratio_equals_numerical_quadrature(gamma, low, width):
 
 @pytest.mark.parametrize(
     ("kt", "hard", "broad"),
-    [(0.24, 1.93e-3, 1.0019), (0.3, 6.78e-3, 1.0068), (0.5, 5.24e-2, 1.0524), (0.71, 0.1375, 1.1375)],
+    [
+        (0.24, 1.93e-3, 1.0019),
+        (0.3, 6.78e-3, 1.0068),
+        (0.5, 5.24e-2, 1.0524),
+        (0.71, 0.1375, 1.1375),
+    ],
 )
 def test_gas_band_ratios_of_the_sheet(kt, hard, broad):
     # coefficient sheet, host side, section 2 (flat-Gaunt bremsstrahlung)
@@ -59,14 +66,15 @@ def test_observed_gas_equals_numerical_quadrature(z, band):
 
     def integrand(energy):
         rest = energy * (1 + z)
-        shape = (1 - share) * np.exp(-rest / kt[0]) / norm[0] + share * np.exp(-rest / kt[1]) / norm[1]
+        shape = (1 - share) * np.exp(-rest / kt[0]) / norm[0] + share * np.exp(
+            -rest / kt[1]
+        ) / norm[1]
         return (1 + z) * shape * np.exp(-column * cross_section(np.array([energy]))[0])
 
     edges = [0.284, 0.4, 0.532, 0.707, 0.867, 1.303, 1.84, 2.471, 3.21, 4.038, 7.111, 8.331]
     bounds = [band[0], *(e for e in edges if band[0] < e < band[1]), band[1]]
     wanted = sum(
-        quad(integrand, a, b, epsabs=0, epsrel=1e-9)[0]
-        for a, b in zip(bounds[:-1], bounds[1:], strict=True)
+        quad(integrand, a, b, epsabs=0, epsrel=1e-9)[0] for a, b in itertools.pairwise(bounds)
     )
     table = GasSpectrum(kt, share).observed_share(Band(*band), column)
     assert np.exp(table(np.array([np.log1p(z)])))[0] == pytest.approx(wanted, rel=1e-6)

@@ -26,7 +26,7 @@ from embersift.sky.absorption import THICK
 from embersift.sky.distance import FlatUniverse
 from embersift.units import Conversion, conversion
 
-__all__ = ["Column", "Layout", "Sources", "layout", "numbers"]
+__all__ = ["Column", "Layout", "Sources", "column_names", "layout", "numbers"]
 
 _MISSING_WORDS = ("", "nan", "na", "n/a", "null", "none", "--", "-", "masked", "<na>")
 # how far a stated distance may be from the one of the stated redshift before the row is marked
@@ -53,7 +53,7 @@ class Sources(NamedTuple):
     problems: Bits
 
     def rows(self, part: slice) -> Sources:
-        return Sources(*(values[part] for values in self))
+        return Sources(*(values[part] for values in self))  # type: ignore[arg-type]
 
 
 @dataclass(frozen=True)
@@ -64,6 +64,12 @@ class Column:
     column: str
     unit: str
     convert: Conversion
+
+
+def column_names(table: Any) -> list[str]:
+    """Column names of a DataFrame or an astropy Table."""
+    names = table.colnames if hasattr(table, "colnames") else table.columns
+    return [str(name) for name in names]
 
 
 class Numbers(NamedTuple):
@@ -195,10 +201,9 @@ class Layout:
         mstar = needed(read("mstar", sign="not positive"))
         sfr = needed(read("sfr", sign="negative"))
         mbh = needed(read("mbh", missing=None, sign="negative"))
-        hole_unknown = np.isnan(mbh) & (
-            (problems & (bit("mbh", "not a number") | bit("mbh", "not finite"))) > 0
-            | ((problems & bit("mbh", "negative")) > 0)
-        )
+        # a blank mass says that there is no hole; an impossible one leaves it open
+        impossible = bit("mbh", "not a number") | bit("mbh", "not finite") | bit("mbh", "negative")
+        hole_unknown = (problems & impossible) > 0
         mbh = np.where(np.isnan(mbh) & ~hole_unknown, 0.0, mbh)
         no_hole = mbh == 0.0
 

@@ -16,21 +16,23 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from embersift.arrays import Array, Mask
+from embersift.arrays import Array
 from embersift.bands import HARD, SOFT
 from embersift.catalogue import Sources
 from embersift.columns import fate_column
 from embersift.constants import EDDINGTON_PER_MSUN, MPC, RATE_TO_LUMINOSITY
+from embersift.errors import LawError
 from embersift.host import Background, HostLight
 from embersift.interpolation import UniformCubic
 from embersift.laws import accretion_law, bolometric_law
 from embersift.laws.accretion import isco_efficiency
 from embersift.laws.conversions import inflow_from_growth
 from embersift.laws.declaration import Coefficients, Disc, Law
-from embersift.errors import LawError
 from embersift.problems import UNUSABLE, Bits
 from embersift.recipe import Observation, Recipe
 from embersift.sky.absorption import power_law_transmission
+from embersift.sky.aperture import circle_radius_kpc, disc_share, rhalf_to_scale
+from embersift.sky.blending import blends
 from embersift.sky.spectrum import GasSpectrum, power_law_ratio
 from embersift.verdict import judge_thresholds
 
@@ -86,6 +88,23 @@ class _View:
     gas_log_share: UniformCubic | None
 
 
+def circle_radius(sources: Sources, aperture: float) -> Array:
+    """Radius [kpc] of an extraction circle of `aperture` arcsec around each hole."""
+    return circle_radius_kpc(aperture, sources.distance / (1.0 + sources.z) ** 2)
+
+
+def share_in_circle(sources: Sources, aperture: float) -> Array:
+    """Share of the host's light in the extraction circle; 1 where the size is not known.
+
+    Binaries and gas are spread alike, as an exponential disc seen face on. A hole without an
+    offset is taken to sit in the centre, where most of the light is.
+    """
+    scale = rhalf_to_scale(sources.rhalf)
+    offset = np.where(np.isnan(sources.offset), 0.0, sources.offset)
+    share = disc_share(circle_radius(sources, aperture) / scale, offset / scale)
+    return np.where(np.isnan(sources.rhalf), 1.0, share)
+
+
 class Chain:
     """A recipe made ready to run.
 
@@ -114,9 +133,7 @@ class Chain:
         self._accretion.eddington_ratio(np.array([1.0]), self._disc)
         self._bolometric = bolometric_law(agn.bolometric)
         self._bolometric_values = self._correction_values()
-        self._anchor = (
-            1.0 if agn.anchor == "hard" else power_law_ratio(agn.gamma, HARD, SOFT)
-        )
+        self._anchor = 1.0 if agn.anchor == "hard" else power_law_ratio(agn.gamma, HARD, SOFT)
         self._growth_efficiency = (
             isco_efficiency(agn.spin) if agn.accretion == "isco" else agn.efficiency
         )
@@ -143,9 +160,7 @@ class Chain:
                     "8 to 50 are in use for faint nuclei (embersift laws lopez2024)."
                 )
             return {"k": agn.k}
-        return (
-            self._bolometric.values if agn.anchor == "hard" else self._bolometric.soft_values
-        )
+        return self._bolometric.values if agn.anchor == "hard" else self._bolometric.soft_values
 
     def _view(self, observation: Observation) -> _View:
         agn, binaries = self.recipe.agn.gamma, self.recipe.background.gamma
@@ -206,7 +221,7 @@ class Chain:
         """What one observation receives of the black hole and of its host."""
         agn_gamma, gamma = self.recipe.agn.gamma, self.recipe.background.gamma
         agn = lx_agn * view.agn_share
-        agn *= np.exp((agn_gamma - 2.0) * u)
+        agn *= np.exp((2.0 - agn_gamma) * u)
         hidden = sources.nh > 0.0
         if hidden.any():
             passed = np.full(u.shape, view.agn_passed)
@@ -224,10 +239,12 @@ class Chain:
         # NaN columns (an nh that is no number) must not look unabsorbed
         agn[np.isnan(sources.nh)] = np.nan
         background = host.point_like * (view.binaries_share * view.binaries_passed)
-        background *= np.exp((gamma - 2.0) * u)
+        background *= np.exp((2.0 - gamma) * u)
         if view.gas_log_share is not None:
             background += host.gas_soft * np.exp(view.gas_log_share(u))
         background /= area
+        if view.observation.aperture is not None:
+            background *= share_in_circle(sources, view.observation.aperture)
         with np.errstate(divide="ignore", invalid="ignore"):
             excess = agn / background
         excess[(agn == 0.0) & (background == 0.0)] = 0.0
@@ -250,9 +267,10 @@ class Chain:
         }
         with np.errstate(invalid="ignore"):
             for law in (self._accretion, self._bolometric):
-                marks[law.stretched(**spans) & accreting] |= self._bits[law.kind, law.name]
-            for law, mark in self._background.stretched(sources):
-                marks[mark] |= self._bits[law.kind, law.name]
+                mark = law.stretched(**spans) & accreting
+                marks |= mark * self._bits[law.kind, law.name]
+            for host_law, mark in self._background.stretched(sources):
+                marks |= mark * self._bits[host_law.kind, host_law.name]
         return marks
 
     # --- whole blocks -----------------------------------------------------------------------
@@ -301,13 +319,27 @@ class Chain:
             problems=sources.problems,
         )
 
-    def run(self, sources: Sources, *, threads: int = 2, chunk: int = CHUNK) -> Screened:
+    @property
+    def blends_hosts(self) -> bool:
+        """Whether holes of one galaxy can fall into one circle, so that hosts matter."""
+        return any(view.observation.aperture is not None for view in self._views)
+
+    def run(
+        self,
+        sources: Sources,
+        *,
+        host: NDArray[np.uint64] | None = None,
+        threads: int = 2,
+        chunk: int = CHUNK,
+    ) -> Screened:
         """The whole chain on a table of any length, in chunks that fit the cache.
 
         Parameters
         ----------
         sources : Sources
             Arrays of one length.
+        host : uint64 array, optional
+            One number per galaxy; holes of one galaxy in one extraction circle are blended.
         threads : int
             Threads that share the chunks; the result is the same for any number.
         chunk : int
@@ -328,7 +360,48 @@ class Chain:
             with ThreadPoolExecutor(threads) as pool:
                 for _ in pool.map(step, starts):
                     pass
+        if host is not None:
+            for view in self._views:
+                if view.observation.aperture is not None:
+                    self._blend(view, view.observation.aperture, sources, host, result)
         return result
+
+    def _blend(
+        self,
+        view: _View,
+        aperture: float,
+        sources: Sources,
+        host: NDArray[np.uint64],
+        result: Screened,
+    ) -> None:
+        """Judge again the rows that share a circle: their summed light meets the limit."""
+        name = view.observation.name
+        seen = result.fluxes[name]
+        shining = (sources.problems & UNUSABLE) == 0
+        shining &= (sources.mbh > 0.0) & (sources.mdot > 0.0)
+        found = blends(host, sources.offset, circle_radius(sources, aperture), seen.agn, shining)
+        rows = np.flatnonzero(found.fainter | (found.summed != seen.agn) & shining)
+        if not rows.size:
+            return
+        screen = self.recipe.screen
+        counted = found.summed[rows]
+        if screen.flux_of == "total":
+            counted = counted + seen.background[rows]
+        every = np.ones(rows.size, dtype=bool)
+        verdicts = judge_thresholds(
+            usable=every,
+            has_hole=every,
+            accreting=every,
+            flux_counted=counted,
+            flux_limit=view.observation.flux_limit,
+            lx_agn=result.luminosities.lx_agn[rows],
+            floor=screen.floor,
+            excess=seen.excess[rows],
+            thresholds=screen.thresholds,
+            blended=found.fainter[rows],
+        )
+        for threshold, codes in zip(screen.thresholds, verdicts, strict=True):
+            result.fates[fate_column(name, threshold)][rows] = codes
 
     def _empty(self, rows: int) -> Screened:
         return Screened(

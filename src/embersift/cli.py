@@ -114,7 +114,7 @@ def screen(
             "-l",
             metavar="NAME=LO-HI:FLUX",
             help="An observation: band in keV and flux limit in erg/s/cm2, such as "
-            "deep=0.5-2:1e-16 (repeatable).",
+            "deep=0.5-2:1e-16, or a reference depth such as cdfs-7ms (repeatable).",
         ),
     ] = None,
     redshift: FixedRedshift = None,
@@ -160,11 +160,11 @@ def tally(
     ] = None,
     central_within: Annotated[
         float | None,
-        typer.Option("--central-within", metavar="KPC", help="Offset up to which a hole is central."),
+        typer.Option(
+            "--central-within", metavar="KPC", help="Offset up to which a hole is central."
+        ),
     ] = None,
-    interval: Annotated[
-        str | None, typer.Option("--interval", help="wilson or jeffreys.")
-    ] = None,
+    interval: Annotated[str | None, typer.Option("--interval", help="wilson or jeffreys.")] = None,
     out: Annotated[
         Path | None, typer.Option("--out", "-o", help="Write the counts: .csv, .ecsv or .json.")
     ] = None,
@@ -227,6 +227,15 @@ def laws(
 
 @app.command()
 @_speaks
+def depths() -> None:
+    """Reference depths for --limit: survey, band, flux limit, area, paper, status."""
+    from embersift.depths import lines
+
+    _print(list(lines()))
+
+
+@app.command()
+@_speaks
 def recipe(out: OutFile = None, overwrite: Overwrite = False) -> None:
     """Print a commented starter recipe, or write it with --out."""
     from embersift.recipe_text import starter
@@ -270,9 +279,7 @@ def _recipe(
     for setting in settings or []:
         key, equals, value = setting.partition("=")
         if not equals:
-            raise RecipeError(
-                f"--set {setting}: write section.key=value, such as screen.floor=0."
-            )
+            raise RecipeError(f"--set {setting}: write section.key=value, such as screen.floor=0.")
         changes[key.strip()] = _toml_value(value.strip())
     if redshift is not None:
         changes["catalogue.redshift"] = redshift
@@ -299,6 +306,15 @@ def _observation(text: str) -> Any:
     from embersift.recipe import Observation, read_observation
 
     name, equals, rest = text.partition("=")
+    if not equals:
+        try:
+            preset: Observation = read_observation({"depth": text})
+        except RecipeError as error:
+            raise RecipeError(
+                f"--limit {text}: write NAME=LO-HI:FLUX, such as deep=0.5-2:1e-16, "
+                f"or a reference depth. {error}"
+            ) from None
+        return preset
     band, colon, flux = rest.rpartition(":")
     low, dash, high = band.partition("-")
     try:

@@ -49,7 +49,9 @@ INPUT: Mapping[str, InputColumn] = MappingProxyType(
     {
         column.name: column
         for column in (
-            InputColumn("id", "", "no", "any type, kept as given; the row number when absent", False),
+            InputColumn(
+                "id", "", "no", "any type, kept as given; the row number when absent", False
+            ),
             InputColumn("host_id", "", "no", "groups the holes of one galaxy", False),
             InputColumn("mstar", "Msun", "yes", "stellar mass"),
             InputColumn("sfr", "Msun / yr", "yes", "star formation rate; 0 is valid"),
@@ -59,7 +61,10 @@ INPUT: Mapping[str, InputColumn] = MappingProxyType(
             ),
             InputColumn("mbh", "Msun", "yes", "black-hole mass; 0 or missing: no black hole"),
             InputColumn(
-                "mdot", "Msun / yr", "yes", "accretion rate; 0: dormant; inflow or growth: catalogue.rate"
+                "mdot",
+                "Msun / yr",
+                "yes",
+                "accretion rate (inflow or growth: catalogue.rate); 0: dormant",
             ),
             InputColumn("redshift", "", "one of", "cosmological redshift"),
             InputColumn(
@@ -118,7 +123,9 @@ OUTPUT: tuple[OutputColumn, ...] = (
         "laws used outside the range they were calibrated on, joined by |",
         "meta.note",
     ),
-    OutputColumn("problem", "", "column and reason, joined by ; - empty when all is well", "meta.note"),
+    OutputColumn(
+        "problem", "", "column and reason, joined by ; - empty when all is well", "meta.note"
+    ),
 )
 
 
@@ -132,9 +139,7 @@ def output_columns(
     fates: list[OutputColumn] = []
     for observation in observations:
         for template in ("flux_agn_NAME", "flux_background_NAME", "excess_NAME"):
-            columns.append(
-                replace(by_name[template], name=template.replace("NAME", observation))
-            )
+            columns.append(replace(by_name[template], name=template.replace("NAME", observation)))
         for threshold in thresholds:
             fates.append(replace(by_name["fate_NAME_T"], name=fate_column(observation, threshold)))
     return (*columns, *fates, by_name["stretched"], by_name["problem"])

@@ -17,8 +17,8 @@ from embersift.recipe_text import key_table, starter
 __all__ = ["pages"]
 
 _MADE = (
-    "Made from the declarations in `src/embersift/{home}` by `python -m embersift.docs_pages docs`; "
-    "a test fails when this page is stale. Do not edit it by hand."
+    "Made from the declarations in `src/embersift/{home}` by `python -m embersift.docs_pages docs`;"
+    "\na test fails when this page is stale. Do not edit it by hand."
 )
 
 
@@ -32,9 +32,7 @@ def columns_page() -> str:
         "| column | unit | needed | meaning |",
         "|---|---|---|---|",
     ]
-    lines += [
-        f"| `{c.name}` | {c.unit or '-'} | {c.need} | {c.meaning} |" for c in INPUT.values()
-    ]
+    lines += [f"| `{c.name}` | {c.unit or '-'} | {c.need} | {c.meaning} |" for c in INPUT.values()]
     lines += [
         "",
         "Units come from the file where the format carries them (ECSV, FITS, VOTable, Parquet and",
@@ -43,8 +41,8 @@ def columns_page() -> str:
         "",
         "## Output",
         "",
-        "The input's own columns first, then these. NAME is an observation, T a threshold. A number",
-        "that is missing is NaN (null in Parquet, an empty field in CSV), never 0 or -99.",
+        "The input's own columns first, then these. NAME is an observation, T a threshold. A",
+        "missing number is NaN (null in Parquet, an empty field in CSV), never 0 or -99.",
         "",
         "| column | unit | meaning |",
         "|---|---|---|",
@@ -74,8 +72,8 @@ def recipe_page() -> str:
     return (
         "# The recipe\n\n"
         + _MADE.format(home="recipe.py")
-        + "\n\nA recipe is a TOML file; every key has a default, and an unknown key is an error that"
-        "\nnames the nearest known one. `--set section.key=value` changes any key for one run.\n\n"
+        + "\n\nA recipe is a TOML file; every key has a default, and an unknown key is an error"
+        "\nthat names the nearest known one. `--set section.key=value` changes any key for one run.\n\n"
         + key_table()
         + "\n## A starter\n\n`embersift recipe` prints this:\n\n```toml\n"
         + starter()

@@ -129,7 +129,8 @@ class Background:
                 "Set background.stellar_age in Gyr."
             )
         fallback = None
-        if law.needs_oh12:
+        # low-mass binaries never depend on O/H here, whatever the other half of their law does
+        if law.needs_oh12 and parts != ("lmxb",):
             if is_fallback:
                 raise LawError(
                     f"background.without_metallicity: {name} needs O/H itself; choose a law "

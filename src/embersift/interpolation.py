@@ -35,8 +35,8 @@ class UniformCubic:
         self.low, self.high = low, high
         self._step = (high - low) / cells
         self._cells = cells
-        nodes = low + self._step * np.arange(-1, cells + 2)
-        f = np.asarray(function(nodes), dtype=float)
+        nodes: Array = low + self._step * np.arange(-1.0, cells + 2)
+        f: Array = np.asarray(function(nodes))
         before, left, right, after = f[:-3], f[1:-2], f[2:-1], f[3:]
         # Lagrange form through nodes -1, 0, 1, 2 as a polynomial in t, the place in the cell
         self._c0 = np.ascontiguousarray(left)
@@ -49,10 +49,10 @@ class UniformCubic:
         inside = (place >= 0.0) & (place <= self._cells)
         if not inside.all():
             place = np.where(inside, place, 0.0)
-        # 32-bit indices halve the memory moved by the four look-ups
-        cell = np.minimum(place.astype(np.int32), self._cells - 1)
+        # take() converts any narrower index on every call
+        cell = np.minimum(place.astype(np.intp), self._cells - 1)
         t = place - cell
-        y = self._c3.take(cell)
+        y: Array = self._c3.take(cell)
         y *= t
         y += self._c2.take(cell)
         y *= t

@@ -139,9 +139,9 @@ def law_lines(laws: Sequence[Law], width: int = 80) -> list[str]:
             facts.append(("check", f"{given}: {one.quantity} {one.expected:g} ({one.source})"))
         lines += [f"{law.name}: {law.summary}", ""]
         last = ""
-        for label, value in facts:
+        for label, words in facts:
             shown = label if label != last else ""
-            wrapped = textwrap.wrap(value, max(30, width - 16)) or [""]
+            wrapped = textwrap.wrap(words, max(30, width - 16)) or [""]
             lines.append(f"  {shown:<12}  {wrapped[0]}")
             lines += [f"  {'':<12}  {more}" for more in wrapped[1:]]
             last = label
@@ -193,7 +193,9 @@ def markdown() -> str:
         lines.append("|---|---|---|---|---|---|---|")
         for law in laws:
             imf = law.imf if isinstance(law, BackgroundLaw) and law.name != "none" else "-"
-            spans = "; ".join(f"{r.quantity} {_span(r.low, r.high)} [{r.status}]" for r in law.ranges)
+            spans = "; ".join(
+                f"{r.quantity} {_span(r.low, r.high)} [{r.status}]" for r in law.ranges
+            )
             lines.append(
                 f"| `{law.name}` | {law.source.citation or '-'} | {_band(law)} | {imf} "
                 f"| {_scatter(law)} | {spans or 'not stated'} | {law.status} |"

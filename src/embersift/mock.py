@@ -14,10 +14,12 @@ a long table are those of a short one with the same seed.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, TypeVar
 
 import numpy as np
+from numpy.typing import NDArray
 
+from embersift.arrays import Array
 from embersift.constants import EDDINGTON_PER_MSUN, RATE_TO_LUMINOSITY
 
 if TYPE_CHECKING:
@@ -26,6 +28,8 @@ if TYPE_CHECKING:
 __all__ = ["INVENTED", "UNITS", "blocks", "population"]
 
 INVENTED = "invented population (the Tern Shoal, which does not exist); made by embersift mock"
+N = TypeVar("N", bound=np.generic)
+
 UNITS = {
     "mstar": "Msun",
     "sfr": "Msun / yr",
@@ -61,8 +65,8 @@ def _block(start: int, seed: int) -> pd.DataFrame:
     second[2:] &= ~second[1:-1]
     galaxy = np.cumsum(~second) - 1
 
-    def per_galaxy(values: np.ndarray) -> np.ndarray:  # type: ignore[type-arg]
-        return values[galaxy]
+    def per_galaxy(values: NDArray[N]) -> NDArray[N]:
+        return np.take(values, galaxy)
 
     log_mstar = 7.0 + 3.6 * draw.beta(1.3, 1.8, n)
     quenched = draw.random(n) < 0.15
@@ -111,7 +115,7 @@ def _block(start: int, seed: int) -> pd.DataFrame:
     )
 
 
-def _digits(values: np.ndarray, digits: int = 5) -> np.ndarray:  # type: ignore[type-arg]
+def _digits(values: Array, digits: int = 5) -> Array:
     """Round to significant digits, so that the demo is a table a person can read."""
     with np.errstate(divide="ignore", invalid="ignore"):
         scale = 10.0 ** (digits - 1 - np.floor(np.log10(np.abs(values))))

@@ -46,11 +46,7 @@ class _Look:
     def mostly_logs(self) -> bool:
         """Too many negative values to be slips in a column that cannot be negative."""
         negative = self.raw < 0.0
-        return bool(
-            negative.sum() >= 3
-            and negative.mean() > 0.3
-            and self.raw_within(-30.0, 20.0)
-        )
+        return bool(negative.sum() >= 3 and negative.mean() > 0.3 and self.raw_within(-30.0, 20.0))
 
     def raw_within(self, low: float, high: float) -> bool:
         if not self.raw.size:
@@ -62,14 +58,14 @@ class _Look:
 def _mass(look: _Look, low: float, logs: tuple[float, float]) -> str:
     if look.log:
         if look.middle > 1e15:
-            return "is declared as log10, and its values look linear|unit = \"Msun\""
+            return 'is declared as log10, and its values look linear|unit = "Msun"'
         return ""
     if look.middle < low:
         if look.raw_within(*logs):
-            return "looks like log10 of a mass in Msun|unit = \"dex(Msun)\""
-        return "looks like units of 1e10 Msun|unit = \"1e10 Msun\""
+            return 'looks like log10 of a mass in Msun|unit = "dex(Msun)"'
+        return 'looks like units of 1e10 Msun|unit = "1e10 Msun"'
     if look.middle > 1e20:
-        return "is far above any mass in Msun (grams?)|unit = \"g\""
+        return 'is far above any mass in Msun (grams?)|unit = "g"'
     return ""
 
 
@@ -83,11 +79,11 @@ def _mbh(look: _Look) -> str:
 
 def _sfr(look: _Look) -> str:
     if look.log and look.middle > 1e6:
-        return "is declared as log10, and its values look linear|unit = \"Msun / yr\""
+        return 'is declared as log10, and its values look linear|unit = "Msun / yr"'
     if not look.log and look.mostly_logs:
-        return "looks like log10 of a rate (many values are negative)|unit = \"dex(Msun / yr)\""
+        return 'looks like log10 of a rate (many values are negative)|unit = "dex(Msun / yr)"'
     if not look.log and look.middle > 1e6:
-        return "is far above any rate in Msun/yr (Msun/Gyr?)|unit = \"Msun / Gyr\""
+        return 'is far above any rate in Msun/yr (Msun/Gyr?)|unit = "Msun / Gyr"'
     return ""
 
 
@@ -115,7 +111,7 @@ def _metallicity(scale: str) -> Callable[[_Look], str]:
         if look.raw_within(6.0, 10.5) and not look.log:
             return "looks like 12+log(O/H)|map the column as oh12"
         if not look.log and look.mostly_logs:
-            return "looks like log10 (many values are negative)|unit = \"dex\""
+            return 'looks like log10 (many values are negative)|unit = "dex"'
         if scale == "mass_fraction" and look.middle > 0.15:
             return 'looks like solar units|catalogue.metallicity = "zsun"'
         if scale == "zsun" and look.middle < 0.04:
@@ -136,19 +132,19 @@ def _redshift(look: _Look) -> str:
 
 def _nh(look: _Look) -> str:
     if look.log:
-        return "is declared as log10, and looks linear|unit = \"cm-2\"" if look.middle > 1e30 else ""
+        return 'is declared as log10, and looks linear|unit = "cm-2"' if look.middle > 1e30 else ""
     if look.raw_within(15.0, 28.0):
-        return "looks like log10 of a column in cm-2|unit = \"dex(cm-2)\""
+        return 'looks like log10 of a column in cm-2|unit = "dex(cm-2)"'
     if look.middle < 1e10:
-        return "looks like units of 1e22 cm-2|unit = \"1e22 cm-2\""
+        return 'looks like units of 1e22 cm-2|unit = "1e22 cm-2"'
     return ""
 
 
 def _mdot(look: _Look, mbh: Array | None) -> str:
     if not look.log and look.mostly_logs:
-        return "looks like log10 of a rate (many values are negative)|unit = \"dex(Msun / yr)\""
+        return 'looks like log10 of a rate (many values are negative)|unit = "dex(Msun / yr)"'
     if look.log and look.middle > 1e6:
-        return "is declared as log10, and its values look linear|unit = \"Msun / yr\""
+        return 'is declared as log10, and its values look linear|unit = "Msun / yr"'
     if mbh is None:
         return ""
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -162,7 +158,7 @@ def _mdot(look: _Look, mbh: Array | None) -> str:
     text = f"gives a median of {middle:.2g} times the Eddington limit"
     fitting = [name for name, factor in _RATES.items() if 1e-7 < middle * factor < 3.0]
     if fitting:
-        return f"{text}; it looks like a rate in {' or '.join(fitting)}|unit = \"{fitting[0]}\""
+        return f'{text}; it looks like a rate in {" or ".join(fitting)}|unit = "{fitting[0]}"'
     return f"{text}|check its unit and that of mbh"
 
 
@@ -209,7 +205,7 @@ def suspicion(layout: Layout, table: object) -> None:
             what, _, cure = looks.partition("|")
             declared = INPUT[quantity].unit
             if cure.startswith("unit"):
-                cure = f"catalogue.columns.{quantity} = {{ column = \"{column.column}\", {cure} }}"
+                cure = f'catalogue.columns.{quantity} = {{ column = "{column.column}", {cure} }}'
             raise CatalogueError(
                 f"{layout.origin}: column {column.column!r} is taken as {quantity}"
                 f"{f' [{column.unit or declared}]' if declared else ''}, and {what} "

@@ -6,6 +6,7 @@ stand together, and the starter recipe, ``docs/recipe.md`` and the checks are al
 
 from __future__ import annotations
 
+import itertools
 import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import MISSING, Field, dataclass, field, fields, replace
@@ -91,7 +92,7 @@ class CatalogueChoices:
     solar_mass_fraction: float | None = _key(
         None,
         optional(number(above=0.0, below=1.0)),
-        "solar metal mass fraction behind a mass_fraction column (0.0134, 0.0142 and 0.02 are used)",
+        "solar metal mass fraction behind a mass_fraction column (0.0134, 0.0142, 0.02 are in use)",
     )
     trusted: tuple[str, ...] = _key(
         (),
@@ -196,9 +197,23 @@ class Observation:
     """One way of looking: a band, a flux limit, a Galactic column, an aperture."""
 
     name: str = _key("any", name_text(), "letters, digits, _ and -; becomes part of column names")
-    band: Band = _key(HARD, band(), "observed band [keV], as [low, high]")
+    band: Band = field(
+        default=HARD,
+        metadata={"accepts": band(), "meaning": "observed band [keV], as [low, high]"},
+    )
     flux_limit: float = _key(0.0, number(least=0.0), "faintest flux that is detected [erg/s/cm2]")
     galactic_nh: float = _key(0.0, number(least=0.0, most=1e25), "Galactic column [cm-2]")
+    aperture: float | None = _key(
+        None,
+        optional(number(above=0.0)),
+        "radius of the extraction circle [arcsec]; only the host's light inside it competes, "
+        "where rhalf is known (left out: the whole galaxy)",
+    )
+    depth: str | None = _key(
+        None,
+        optional(text()),
+        "a reference depth (embersift depths) that gives band and flux limit where they are left out",
+    )
 
 
 @dataclass(frozen=True)
@@ -242,11 +257,13 @@ class TallyChoices:
     central_within: float = _key(
         1.0,
         number(least=0.0),
-        "offset [kpc] up to which a hole counts as central, for --split (common practice, no source)",
+        "offset [kpc] up to which a hole is central, for --split (common practice, no source)",
     )
     interval: str = _key("wilson", choice("wilson", "jeffreys"), "binomial interval of fractions")
     level: float = _key(
-        0.6826894921370859, number(above=0.0, below=1.0), "probability inside the interval (1 sigma)"
+        0.6826894921370859,
+        number(above=0.0, below=1.0),
+        "probability inside the interval (1 sigma)",
     )
 
 
@@ -311,7 +328,8 @@ class Recipe:
         except (UnicodeDecodeError, tomllib.TOMLDecodeError, RecursionError) as error:
             reason = "nested too deeply" if isinstance(error, RecursionError) else str(error)
             raise RecipeError(
-                f"Recipe {path}: not valid TOML: {reason}. `embersift recipe` writes one to start from."
+                f"Recipe {path}: not valid TOML: {reason}. "
+                "`embersift recipe` writes one to start from."
             ) from None
         try:
             return cls.from_dict(content)
@@ -358,7 +376,7 @@ class Recipe:
                 "the ten digits that a column name shows)."
             )
         edges = self.tally.edges
-        if len(edges) < 2 or any(b <= a for a, b in zip(edges[:-1], edges[1:], strict=True)):
+        if len(edges) < 2 or any(b <= a for a, b in itertools.pairwise(edges)):
             raise RecipeError("tally.edges: at least two values are needed, each above the last.")
         if self.screen.headline not in thresholds:
             if headline_given:
@@ -509,15 +527,23 @@ def _observations(value: Any) -> tuple[Observation, ...]:
         raise RecipeError("observations are written as [[observation]], one block each.")
     read: list[Observation] = []
     for item in value:
-        if "name" not in item or "band" not in item:
-            raise RecipeError("[[observation]]: each needs at least a name and a band.")
         read.append(read_observation(item))
     return tuple(read)
 
 
 def read_observation(content: Mapping[str, Any]) -> Observation:
     """One observation from its keys, checked like those of a recipe."""
-    read: Observation = _read_section("observation", content, Observation)
+    filled = dict(content)
+    if isinstance(filled.get("depth"), str):
+        from embersift.depths import depth
+
+        preset = depth(filled["depth"])
+        filled.setdefault("name", filled["depth"])
+        filled.setdefault("band", list(preset.band))
+        filled.setdefault("flux_limit", preset.flux_limit)
+    if "name" not in filled or "band" not in filled:
+        raise RecipeError("[[observation]]: each needs at least a name and a band, or a depth.")
+    read: Observation = _read_section("observation", filled, Observation)
     return read
 
 

@@ -80,6 +80,8 @@ _EXAMPLES: Mapping[str, str] = {
     "total": '"mineo2014"',
     "without_metallicity": '"lehmer2019"',
     "stellar_age": "5.0",
+    "aperture": "2.0",
+    "depth": '"cdfs-7ms"',
 }
 
 

@@ -148,7 +148,7 @@ def band() -> Accepts:
                 f"{key} = [{low:g}, {high:g}]: the band is upside down; "
                 "write the lower energy first."
             )
-        if not (0.03 <= low and high <= 1000.0):
+        if not (low >= 0.03 and high <= 1000.0):
             raise _refuse(key, value, words)
         return Band(low, high)
 

@@ -11,14 +11,14 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from embersift import __version__
-from embersift.catalogue import Layout, Sources, layout
-from embersift.columns import INPUT, output_columns
+from embersift.catalogue import Layout, Sources, column_names, layout
+from embersift.columns import output_columns
 from embersift.errors import CatalogueError, OutputError
 from embersift.plausibility import suspicion
 from embersift.problems import UNUSABLE
 from embersift.recipe import Recipe
 from embersift.recipe_text import to_toml
-from embersift.screening import Screening, fates_of_table, screen_table, tally, tally_screening
+from embersift.screening import Screening, screen_table, tally, tally_screening
 from embersift.tables import (
     Provenance,
     ReadOptions,
@@ -108,7 +108,11 @@ def screen_file(
     check_output(target, overwrite=overwrite, protect=[catalogue])
     table = read_table(catalogue, _options(recipe))
     screening = screen_table(table, recipe, origin=str(catalogue))
-    ids = [screening.layout.columns[q].column for q in ("id", "host_id") if q in screening.layout.columns]
+    ids = [
+        screening.layout.columns[q].column
+        for q in ("id", "host_id")
+        if q in screening.layout.columns
+    ]
     declared = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
     units = units_of(table) | {
         c.column: c.unit for c in screening.layout.columns.values() if c.unit
@@ -183,8 +187,7 @@ def recipe_of(screened: Path) -> Recipe:
 def check_file(catalogue: Path, recipe: Recipe) -> Checked:
     """Read a catalogue and judge its columns and rows, without computing anything."""
     table = read_table(catalogue, _options(recipe))
-    names = [str(n) for n in (table.columns if hasattr(table, "iloc") else table.colnames)]
-    plan = layout(names, units_of(table), recipe, str(catalogue))
+    plan = layout(column_names(table), units_of(table), recipe, str(catalogue))
     if len(table) == 0:
         raise CatalogueError(f"{catalogue}: the table has columns and no rows.")
     doubt = ""
@@ -246,5 +249,3 @@ def _stem(path: Path) -> str:
     for ending in (".gz",):
         name = name.removesuffix(ending)
     return Path(name).stem
-
-

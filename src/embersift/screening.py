@@ -7,9 +7,10 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, TypeVar
 
 import numpy as np
+from numpy.typing import NDArray
 
 from embersift.arrays import Array
-from embersift.catalogue import Layout, Sources, layout, numbers
+from embersift.catalogue import Layout, Sources, column_names, layout, numbers
 from embersift.chain import Chain, Screened
 from embersift.columns import OutputColumn, output_columns
 from embersift.errors import CatalogueError, RecipeError, did_you_mean
@@ -90,18 +91,17 @@ def screen_table(
     """`screen`, keeping what a summary needs besides the table."""
     from embersift.tables import units_of
 
-    names = list(table.columns) if hasattr(table, "iloc") else list(table.colnames)
-    plan = layout([str(name) for name in names], units_of(table), recipe, origin)
+    names = column_names(table)
+    plan = layout(names, units_of(table), recipe, origin)
     chain = Chain(recipe)
-    added = output_columns(
-        [o.name for o in recipe.observation], recipe.screen.thresholds
-    )
-    refuse_collisions([str(name) for name in names], added, origin)
+    added = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
+    refuse_collisions(names, added, origin)
     if len(table) == 0:
         raise CatalogueError(f"{origin}: the table has columns and no rows; nothing to screen.")
     suspicion(plan, table)
     sources = plan.take(table)
-    result = chain.run(sources, threads=threads)
+    host = host_numbers(table, plan) if chain.blends_hosts else None
+    result = chain.run(sources, host=host, threads=threads)
     return Screening(attach(table, chain, result), chain, plan, sources, result)
 
 
@@ -125,7 +125,7 @@ def result_columns(chain: Chain, result: Screened) -> dict[str, Any]:
         columns[f"flux_background_{name}"] = seen.background
         columns[f"excess_{name}"] = seen.excess
     for name, codes in result.fates.items():
-        columns[name] = pd.Categorical.from_codes(codes, categories=list(FATES))
+        columns[name] = pd.Categorical.from_codes(codes, categories=pd.Index(FATES))
     columns["stretched"] = _words(
         result.stretched,
         lambda bits: "|".join(
@@ -142,7 +142,7 @@ def _words(bits: Any, text: Any) -> Any:
 
     # sorting 1e6 integers costs more than the whole chain; hashing does not
     codes, patterns = pd.factorize(bits)
-    return pd.Categorical.from_codes(codes, categories=[text(int(p)) for p in patterns])
+    return pd.Categorical.from_codes(codes, categories=pd.Index([text(int(p)) for p in patterns]))
 
 
 def attach(table: Any, chain: Chain, result: Screened) -> Any:
@@ -156,7 +156,10 @@ def attach(table: Any, chain: Chain, result: Screened) -> Any:
         added = pd.DataFrame(columns, index=table.index, copy=False)
         screened = pd.concat([table, added[[c.name for c in declared]]], axis=1)
         units = dict(table.attrs.get("units", {}))
-        screened.attrs = {**table.attrs, "units": units | {c.name: c.unit for c in declared if c.unit}}
+        screened.attrs = {
+            **table.attrs,
+            "units": units | {c.name: c.unit for c in declared if c.unit},
+        }
         return screened
     screened = table.copy()
     for column in declared:
@@ -228,7 +231,7 @@ def tally(
     _check_edges_fit(recipe, changes)
     if changes:
         recipe = recipe.with_settings(changes)
-    names = [str(n) for n in (screened.columns if hasattr(screened, "iloc") else screened.colnames)]
+    names = column_names(screened)
     fates = fates_of_table(screened, names, origin)
     from embersift.tables import units_of
 
@@ -296,10 +299,7 @@ def _count(
         code = np.where(np.isnan(sources.offset), 2, (sources.offset > limit).astype(int))
         labels = (f"offset up to {limit:g} kpc", f"offset above {limit:g} kpc", "offset unknown")
         groups = (code.astype(np.int8), labels)
-    host = None
-    if "host_id" in plan.columns:
-        column = pd.Series(np.asarray(table[plan.columns["host_id"].column]).astype(str))
-        host = pd.util.hash_array(column.to_numpy(dtype=object))
+    host = host_numbers(table, plan)
     counted = count(
         values,
         fates,
@@ -310,6 +310,16 @@ def _count(
         split=groups,
     )
     return counted.table(interval=recipe.tally.interval, level=recipe.tally.level)
+
+
+def host_numbers(table: Any, plan: Layout) -> NDArray[np.uint64] | None:
+    """One number per galaxy from `host_id`; None without that column."""
+    import pandas as pd
+
+    if "host_id" not in plan.columns:
+        return None
+    column = pd.Series(np.asarray(table[plan.columns["host_id"].column]).astype(str))
+    return np.asarray(pd.util.hash_array(column.to_numpy(dtype=object)), dtype=np.uint64)
 
 
 def _values_of(plan: Layout, sources: Sources, table: Any, by: str) -> tuple[str, Array]:
@@ -325,11 +335,11 @@ def _values_of(plan: Layout, sources: Sources, table: Any, by: str) -> tuple[str
         return f"log10 {by}", np.where(np.isfinite(values), values, np.nan)
     if by in held:
         return by, held[by]
-    names = list(table.columns) if hasattr(table, "iloc") else list(table.colnames)
+    names = column_names(table)
     if by not in names:
         raise CatalogueError(
             f"{plan.origin}: there is no column {by!r} to count by. "
-            f"{did_you_mean(by, [*held, *map(str, names)])}"
+            f"{did_you_mean(by, [*held, *names])}"
         )
     values = numbers(table[by]).values
     return by, np.where(np.isfinite(values), values, np.nan)

@@ -7,10 +7,11 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from embersift.catalogue import Layout, Sources
+from embersift.catalogue import Layout, Sources, column_names
 from embersift.columns import INPUT
+from embersift.depths import depth
 from embersift.problems import UNUSABLE, problem_counts
-from embersift.recipe import Recipe
+from embersift.recipe import Observation, Recipe
 from embersift.tally import lines as tally_table
 from embersift.tally import where_hidden_lines
 
@@ -53,8 +54,7 @@ def screening_lines(done: ScreenedFile, width: int) -> list[str]:
     for observation in recipe.observation:
         lines += _wrapped(
             f"Seen as {observation.name}" if len(observation.name) < 6 else observation.name,
-            f"{observation.band} observed, flux limit {observation.flux_limit:g} erg/s/cm2, "
-            f"Galactic column {observation.galactic_nh:g} cm-2",
+            _observation_words(observation),
             width,
         )
     lines.append("")
@@ -97,9 +97,7 @@ def _count_lines(done: ScreenedFile, recipe: Recipe, width: int) -> list[str]:
         if others:
             shown = []
             for threshold in others:
-                here = counts[
-                    (counts["observation"] == name) & (counts["threshold"] == threshold)
-                ]
+                here = counts[(counts["observation"] == name) & (counts["threshold"] == threshold)]
                 total = here["black_holes"].sum()
                 visible = here["visible"].sum()
                 share = f"{100.0 * (1.0 - visible / total):.1f} %" if total else "-"
@@ -107,6 +105,18 @@ def _count_lines(done: ScreenedFile, recipe: Recipe, width: int) -> list[str]:
             lines += textwrap.wrap("; ".join(shown), width)
         lines.append("")
     return lines
+
+
+def _observation_words(observation: Observation) -> str:
+    words = (
+        f"{observation.band} observed, flux limit {observation.flux_limit:g} erg/s/cm2, "
+        f"Galactic column {observation.galactic_nh:g} cm-2"
+    )
+    if observation.aperture is not None:
+        words += f", circle of {observation.aperture:g} arcsec radius"
+    if observation.depth is not None:
+        words += f"; reference depth {depth(observation.depth)}"
+    return words
 
 
 def _column_words(plan: Layout) -> str:
@@ -147,7 +157,7 @@ def _cautions(done: ScreenedFile) -> list[str]:
         )
     if not np.any(sources.nh > 0.0):
         cautions.append("No intrinsic column was given: obscured black holes are not modelled.")
-    cautions.append("Accretion rates are taken as they stand; real sources vary by factors of a few.")
+    cautions.append("Accretion rates are taken as they stand; real sources vary by factors of few.")
     cautions.append(_SCREENING_ONLY)
     return cautions
 
@@ -174,7 +184,9 @@ def check_lines(done: Checked, width: int) -> list[str]:
         )
     absent = [q for q in INPUT if q not in plan.columns and q != "metallicity"]
     lines += ["", *_wrapped("Not there", ", ".join(absent) or "nothing", width)]
-    unused = [str(n) for n in _names(done.table) if n not in {c.column for c in plan.columns.values()}]
+    unused = [
+        n for n in column_names(done.table) if n not in {c.column for c in plan.columns.values()}
+    ]
     lines += _wrapped("Passed on", ", ".join(unused) or "nothing", width)
     unusable = int(np.count_nonzero(sources.problems & UNUSABLE))
     lines += ["", f"{_rows(unusable)} unusable"]
@@ -183,10 +195,6 @@ def check_lines(done: Checked, width: int) -> list[str]:
     if done.suspicion:
         lines += ["", *textwrap.wrap(f"This would stop a screening: {done.suspicion}", width)]
     return lines
-
-
-def _names(table: object) -> list[str]:
-    return list(table.columns) if hasattr(table, "iloc") else list(table.colnames)  # type: ignore[attr-defined]
 
 
 def _range(done: Checked, quantity: str) -> str:

@@ -67,7 +67,7 @@ def straightforward(table: pd.DataFrame) -> pd.DataFrame:
         good = z > 0
         distance[good] = cosmology.luminosity_distance(z[good]).to_value(units.cm)
         area = 4 * np.pi * distance**2
-        shift = (1 + z) ** -0.2
+        shift = (1 + z) ** 0.2
         gas_flux = np.zeros(len(z))
         for kt, share in ((0.24, 2 / 3), (0.71, 1 / 3)):
             norm = share / (np.exp(-0.5 / kt) - np.exp(-2 / kt))
@@ -120,7 +120,10 @@ def main(rows: int) -> None:
     alone = median_time(lambda: chain.run(sources))
     one = median_time(lambda: chain.run(sources, threads=1))
     print(f"straightforward, astropy distance   {plain:8.3f} s   {rows / plain / 1e6:6.2f} Mrow/s")
-    print(f"embersift.screen, DataFrame         {screened:8.3f} s   {rows / screened / 1e6:6.2f} Mrow/s")
+    print(
+        f"embersift.screen, DataFrame         {screened:8.3f} s   "
+        f"{rows / screened / 1e6:6.2f} Mrow/s"
+    )
     print(f"the chain alone, two threads        {alone:8.3f} s   {rows / alone / 1e6:6.2f} Mrow/s")
     print(f"the chain alone, one thread         {one:8.3f} s   {rows / one / 1e6:6.2f} Mrow/s")
     print(f"ratio straightforward / screen      {plain / screened:8.1f}")

@@ -34,7 +34,7 @@ Examples
 >>> round(1.0 * imf_factor("sfr", "chabrier", "kroupa"), 4)
 1.0635
 >>> import numpy as np
->>> oh12_from_zsun(np.array([1.0, 0.1])).tolist()
+>>> oh12_from_zsun(np.array([1.0, 0.1])).round(3).tolist()
 [8.69, 7.69]
 >>> oh12_from_mass_fraction(np.array([0.02, 0.002]), 0.02).round(3).tolist()
 [8.69, 7.69]

@@ -47,10 +47,11 @@ from embersift.laws.declaration import (
     Status,
 )
 
-__all__ = ["OH12_SCALE", "TWO_TERM_COEFFICIENTS", "two_term_law"]
+__all__ = ["AS_SEEN", "OH12_SCALE", "TWO_TERM_COEFFICIENTS", "two_term_law"]
 
 _Term = Literal["mstar", "sfr"]
 _WORDS: Mapping[_Term, str] = {"mstar": "M*", "sfr": "SFR"}
+AS_SEEN = "Whether corrected for the host's own absorption is not stated; taken as apparent"
 OH12_SCALE = f"12 + log(O/H), solar {SOLAR_OH12:g}"
 
 

@@ -8,9 +8,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from embersift.arrays import Array
 from embersift.constants import SPEED_OF_LIGHT_KM
 from embersift.interpolation import UniformCubic
-from embersift.arrays import Array
 
 __all__ = ["HIGHEST_REDSHIFT", "FlatUniverse"]
 

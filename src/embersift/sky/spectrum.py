@@ -3,22 +3,23 @@
 | component | spectrum |
 |---|---|
 | black hole, binaries | power law, photon index Gamma: photons per keV proportional to E^-Gamma |
-| hot gas | two bremsstrahlung components with a flat Gaunt factor: energy per keV proportional to exp(-E/kT) |
+| hot gas | two bremsstrahlung components, flat Gaunt factor: energy per keV as exp(-E/kT) |
 
 An observed band [e1, e2] is the rest band [e1 (1+z), e2 (1+z)]. For a power law this is the
-factor (1+z)^(Gamma-2); thermal gas needs its own integral. Lines raise the soft band of real gas,
+factor (1+z)^(2-Gamma); thermal gas needs its own integral. Lines raise the soft band of real gas,
 so the hard share given here is an upper estimate.
 """
 
 from __future__ import annotations
 
+import itertools
 import math
 from dataclasses import dataclass
 
 import numpy as np
 
 from embersift.arrays import Array
-from embersift.bands import HARD, SOFT, Band
+from embersift.bands import SOFT, Band
 from embersift.interpolation import UniformCubic
 from embersift.sky.absorption import EDGES, cross_section
 from embersift.sky.distance import HIGHEST_REDSHIFT
@@ -30,7 +31,8 @@ def power_law_integral(gamma: float, band: Band) -> float:
     """Energy in `band` [keV^(2-Gamma)] of a power law with one photon/keV at 1 keV."""
     if math.isclose(gamma, 2.0, abs_tol=1e-12):
         return math.log(band.high / band.low)
-    return (band.high ** (2.0 - gamma) - band.low ** (2.0 - gamma)) / (2.0 - gamma)
+    power = 2.0 - gamma
+    return (math.pow(band.high, power) - math.pow(band.low, power)) / power
 
 
 def power_law_ratio(gamma: float, wanted: Band, given: Band) -> float:
@@ -83,14 +85,14 @@ class GasSpectrum:
         The Galactic column acts at observed energies, so the integral is smooth in u and a table
         of its logarithm serves every row.
         """
-        inner = EDGES[(EDGES > band.low) & (EDGES < band.high)]
+        inner = EDGES[(band.low < EDGES) & (band.high > EDGES)]
         bounds = np.concatenate(([band.low], inner, [band.high]))
         # cells no wider than a quarter of the cooler temperature resolve its exponential
         bounds = np.unique(
             np.concatenate(
                 [
                     np.linspace(a, b, 2 + min(400, int((b - a) / (0.25 * self.kt[0]))))
-                    for a, b in zip(bounds[:-1], bounds[1:], strict=True)
+                    for a, b in itertools.pairwise(bounds)
                 ]
             )
         )
