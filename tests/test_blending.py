@@ -64,9 +64,9 @@ def test_only_the_light_inside_the_circle_competes(offset, share):
     # coefficient sheet, observer's side, 9: shares of an exponential disc in a circle of one scale
     # length; at z 0.05 one arcsec is 0.97749 kpc, half the light lies within 1.678347 scale lengths
     whole = run(seen_through(None)).fluxes["circle"]
-    circle = run(
-        seen_through(1.0), rhalf=1.678347 * 0.97749, offset=offset * 0.97749
-    ).fluxes["circle"]
+    circle = run(seen_through(1.0), rhalf=1.678347 * 0.97749, offset=offset * 0.97749).fluxes[
+        "circle"
+    ]
     assert circle.background[0] / whole.background[0] == pytest.approx(share, abs=1e-4)
     assert circle.agn[0] == whole.agn[0]
 

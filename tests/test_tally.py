@@ -17,7 +17,7 @@ from hypothesis import strategies as st
 
 from embersift.errors import CatalogueError, RecipeError
 from embersift.exact_sums import as_floats, exact_sums
-from embersift.tally import (
+from embersift.tallying import (
     Tally,
     count,
     format_threshold,
@@ -430,6 +430,15 @@ def test_tallies_longer_than_a_step_are_those_of_their_parts():
     whole = part(0, 300_000)
     assert part(0, 77_777) + (part(77_777, 200_001) + part(200_001, 300_000)) == whole
     assert pickle.loads(pickle.dumps(whole)) == whole
+
+
+def test_a_long_stream_does_not_sort_its_galaxies_at_every_block():
+    fates = {"fate_any_2": codes(*["visible"] * 10)}
+    blocks = (count([8.2] * 10, fates, EDGES, host=np.arange(10) + 5 * i) for i in range(300))
+    whole = Tally.merge(blocks)
+    assert whole.table()["galaxies"].sum() == 10 + 5 * 299
+    # each set is more than twice the next, so there are at most log2 of all
+    assert max(len(parts) for parts in whole.galaxies.parts) <= math.log2(3000)
 
 
 def test_tallies_of_other_data_differ():

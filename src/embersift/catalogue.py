@@ -26,9 +26,9 @@ from embersift.sky.absorption import THICK
 from embersift.sky.distance import FlatUniverse
 from embersift.units import Conversion, conversion
 
-__all__ = ["Column", "Layout", "Sources", "column_names", "layout", "numbers"]
+__all__ = ["MISSING_WORDS", "Column", "Layout", "Sources", "column_names", "layout", "numbers"]
 
-_MISSING_WORDS = ("", "nan", "na", "n/a", "null", "none", "--", "-", "masked", "<na>")
+MISSING_WORDS = ("", "nan", "na", "n/a", "null", "none", "--", "-", "masked", "<na>")
 # how far a stated distance may be from the one of the stated redshift before the row is marked
 _DISTANCE_FACTOR = 1.5
 
@@ -128,7 +128,7 @@ def numbers(column: Any, sentinels: Sequence[float] = ()) -> Numbers:
         missing = np.isnan(values)
         if missing.any():
             words = series[missing]
-            empty = words.isna() | words.astype(str).str.strip().str.lower().isin(_MISSING_WORDS)
+            empty = words.isna() | words.astype(str).str.strip().str.lower().isin(MISSING_WORDS)
             bad[np.flatnonzero(missing)[~empty.to_numpy(dtype=bool)]] = True
             missing &= ~bad
     if mask is not None and mask.any():

@@ -65,7 +65,25 @@ def columns_page() -> str:
         f"| `{p.column}` | {p.reason} | {'unusable' if p.unusable else 'judged, and noted'} |"
         for p in PROBLEMS
     ]
+    lines += [
+        "",
+        "## Tally",
+        "",
+        "`embersift tally --out` and `embersift.tally` give one row per observation, threshold,",
+        "group and bin; the slots below, above and without a value are there too. In a weighted",
+        "tally every count but `rows` is a sum of weights.",
+        "",
+        *(line.strip() for line in _tally_table()),
+    ]
     return "\n".join(lines) + "\n"
+
+
+def _tally_table() -> list[str]:
+    """The table of columns in the docstring of `Tally.table`."""
+    from embersift.tallying import Tally
+
+    text = (Tally.table.__doc__ or "").splitlines()
+    return [line for line in text if line.strip().startswith("|")]
 
 
 def recipe_page() -> str:
@@ -73,7 +91,7 @@ def recipe_page() -> str:
         "# The recipe\n\n"
         + _MADE.format(home="recipe.py")
         + "\n\nA recipe is a TOML file; every key has a default, and an unknown key is an error"
-        "\nthat names the nearest known one. `--set section.key=value` changes any key for one run.\n\n"
+        "\nthat names the nearest known one. `--set section.key=value` changes it for one run.\n\n"
         + key_table()
         + "\n## A starter\n\n`embersift recipe` prints this:\n\n```toml\n"
         + starter()

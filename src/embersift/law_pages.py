@@ -28,6 +28,11 @@ _STATUS = {
 }
 
 
+_CITATION = re.compile(
+    r"(?P<author>.+?), \d{4}, (?P<journal>[^,]+), (?P<volume>[^,]+), (?P<pages>[^\s;,]+)"
+)
+
+
 def _band(law: Law) -> str:
     if isinstance(law, BackgroundLaw):
         return str(law.band)
@@ -137,7 +142,7 @@ def law_lines(laws: Sequence[Law], width: int = 80) -> list[str]:
         for one in law.checks:
             given = ", ".join(f"{k} {_number(v)}" for k, v in one.inputs.items())
             facts.append(("check", f"{given}: {one.quantity} {one.expected:g} ({one.source})"))
-        lines += [f"{law.name}: {law.summary}", ""]
+        lines += [*textwrap.wrap(f"{law.name}: {law.summary}", width), ""]
         last = ""
         for label, words in facts:
             shown = label if label != last else ""
@@ -164,7 +169,14 @@ def bibtex_lines(laws: Sequence[Law]) -> list[str]:
         seen.add(source.citation)
         key = source.bibcode or re.sub(r"[^a-z0-9]", "", law.name.lower())
         lines.append(f"@article{{{key},")
-        lines.append(f"  note = {{{source.citation}}},")
+        parts = _CITATION.match(source.citation)
+        if parts:
+            authors = re.sub(r"(?<=\.), (?=\S)", " and ", parts["author"])
+            authors = authors.replace(" et al.", " and others")
+            lines.append(f"  author = {{{authors}}},")
+            lines += [f"  {name} = {{{parts[name]}}}," for name in ("journal", "volume", "pages")]
+        else:
+            lines.append(f"  note = {{{source.citation}}},")
         lines.append(f"  year = {{{source.year}}},")
         if source.doi:
             lines.append(f"  doi = {{{source.doi}}},")

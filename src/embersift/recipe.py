@@ -212,7 +212,7 @@ class Observation:
     depth: str | None = _key(
         None,
         optional(text()),
-        "a reference depth (embersift depths) that gives band and flux limit where they are left out",
+        "a reference depth (embersift depths): gives the band and flux limit that are left out",
     )
 
 

@@ -165,7 +165,7 @@ def tally_file(
     table = read_table(screened, ReadOptions())
     counts = tally(table, recipe, by=by, edges=edges, split=split, origin=str(screened))
     if out is not None and out.suffix == ".json":
-        from embersift.tally import to_records
+        from embersift.tallying import to_records
 
         text = json.dumps(to_records(counts), indent=1, allow_nan=False)
         write_text(text + "\n", out, overwrite=overwrite)

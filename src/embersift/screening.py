@@ -10,14 +10,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from embersift.arrays import Array
-from embersift.catalogue import Layout, Sources, column_names, layout, numbers
+from embersift.catalogue import MISSING_WORDS, Layout, Sources, column_names, layout, numbers
 from embersift.chain import Chain, Screened
 from embersift.columns import OutputColumn, output_columns
 from embersift.errors import CatalogueError, RecipeError, did_you_mean
 from embersift.plausibility import suspicion
 from embersift.problems import problem_text
 from embersift.recipe import Recipe
-from embersift.tally import count, split_fate_column
+from embersift.tallying import count, split_fate_column
 from embersift.verdict import FATES
 
 if TYPE_CHECKING:
@@ -202,7 +202,7 @@ def tally(
     Returns
     -------
     pandas.DataFrame
-        Tidy: one row per observation, threshold, group and bin (columns: ``docs/tallies.md``).
+        Tidy: one row per observation, threshold, group and bin (columns: ``docs/columns.md``).
 
     Raises
     ------
@@ -286,7 +286,6 @@ def _count(
     plan: Layout, sources: Sources, fates: Mapping[str, Any], table: Any, recipe: Recipe,
     split: str | None,
 ) -> pd.DataFrame:  # fmt: skip
-    import pandas as pd
 
     by, values = _values_of(plan, sources, table, recipe.tally.by)
     groups = None
@@ -319,7 +318,11 @@ def host_numbers(table: Any, plan: Layout) -> NDArray[np.uint64] | None:
     if "host_id" not in plan.columns:
         return None
     column = pd.Series(np.asarray(table[plan.columns["host_id"].column]).astype(str))
-    return np.asarray(pd.util.hash_array(column.to_numpy(dtype=object)), dtype=np.uint64)
+    codes = np.asarray(pd.util.hash_array(column.to_numpy(dtype=object)), dtype=np.uint64)
+    # rows without a host are galaxies of their own, not one galaxy called nothing
+    alone = np.flatnonzero(column.str.strip().str.lower().isin(MISSING_WORDS))
+    codes[alone] = pd.util.hash_array(np.array([f"\0row {i}" for i in alone], dtype=object))
+    return codes
 
 
 def _values_of(plan: Layout, sources: Sources, table: Any, by: str) -> tuple[str, Array]:

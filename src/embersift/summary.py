@@ -12,10 +12,12 @@ from embersift.columns import INPUT
 from embersift.depths import depth
 from embersift.problems import UNUSABLE, problem_counts
 from embersift.recipe import Observation, Recipe
-from embersift.tally import lines as tally_table
-from embersift.tally import where_hidden_lines
+from embersift.tallying import lines as tally_table
+from embersift.tallying import where_hidden_lines
 
 if TYPE_CHECKING:
+    import pandas as pd
+
     from embersift.running import Checked, ScreenedFile, TalliedFile
 
 __all__ = ["check_lines", "screening_lines", "tally_lines"]
@@ -51,12 +53,10 @@ def screening_lines(done: ScreenedFile, width: int) -> list[str]:
     )
     lines += _wrapped("Columns", _column_words(screening.layout), width)
     lines += _law_lines(done, width)
+    label = "Observed"
     for observation in recipe.observation:
-        lines += _wrapped(
-            f"Seen as {observation.name}" if len(observation.name) < 6 else observation.name,
-            _observation_words(observation),
-            width,
-        )
+        lines += _wrapped(label, f"{observation.name}: {_observation_words(observation)}", width)
+        label = ""
     lines.append("")
     lines += _count_lines(done, recipe, width)
     lines += ["Cautions"]
@@ -95,16 +95,22 @@ def _count_lines(done: ScreenedFile, recipe: Recipe, width: int) -> list[str]:
         lines += where_hidden_lines(counts, name, headline, width)
         others = [t for t in recipe.screen.thresholds if t != headline]
         if others:
-            shown = []
-            for threshold in others:
-                here = counts[(counts["observation"] == name) & (counts["threshold"] == threshold)]
-                total = here["black_holes"].sum()
-                visible = here["visible"].sum()
-                share = f"{100.0 * (1.0 - visible / total):.1f} %" if total else "-"
-                shown.append(f"threshold {threshold:g}: {visible:,g} visible, {share} hidden")
-            lines += textwrap.wrap("; ".join(shown), width)
+            lines += textwrap.wrap(
+                "; ".join(_total_words(counts, name, threshold) for threshold in others), width
+            )
         lines.append("")
     return lines
+
+
+def _total_words(counts: pd.DataFrame, observation: str, threshold: float) -> str:
+    """One threshold in a few words; column names carry ten digits of it."""
+    here = counts[
+        (counts["observation"] == observation) & np.isclose(counts["threshold"], threshold)
+    ]
+    holes, visible = float(here["black_holes"].sum()), float(here["visible"].sum())
+    share = f"{100.0 * (1.0 - visible / holes):.1f} %" if holes else "none of none"
+    number = f"{visible:,.0f}" if visible.is_integer() else f"{visible:,.1f}"
+    return f"threshold {threshold:g}: {number} visible, {share} hidden"
 
 
 def _observation_words(observation: Observation) -> str:
@@ -217,9 +223,14 @@ def tally_lines(done: TalliedFile, width: int) -> list[str]:
     counts = done.counts
     lines: list[str] = []
     level = f"{100.0 * done.recipe.tally.level:.0f} %"
-    for (observation, threshold, group), here in counts.groupby(
-        ["observation", "threshold", "split"], sort=False
-    ):
+    keys = ["observation", "threshold", "split"]
+    for name, limit, group in counts[keys].drop_duplicates().itertuples(index=False):
+        observation, threshold = str(name), float(limit)
+        here = counts[
+            (counts["observation"] == name)
+            & (counts["threshold"] == limit)
+            & (counts["split"] == group)
+        ]
         title = f"{observation}: hidden at threshold {threshold:g}"
         if group and group != "all":
             title += f", {group}"

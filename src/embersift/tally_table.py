@@ -18,7 +18,7 @@ from embersift.verdict import DORMANT, FATES, NO_BLACK_HOLE, UNUSABLE_ROW, VISIB
 if TYPE_CHECKING:
     import pandas as pd
 
-    from embersift.tally import Tally
+    from embersift.tallying import Tally
 
 __all__ = ["CAUSES", "tally_frame", "to_records"]
 

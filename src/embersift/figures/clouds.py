@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, cast
 
 import numpy as np
 from numpy.typing import NDArray
 
 from embersift.arrays import Array
 from embersift.constants import MPC
-from embersift.figures.reading import GROUPS, Reading, View, group_of, log10
+from embersift.figures.reading import GROUPS, Reading, group_of, log10
 from embersift.figures.style import (
     FATE_MARKS,
     INK,
@@ -18,6 +18,8 @@ from embersift.figures.style import (
     Mark,
     dress,
     new_axes,
+    plain,
+    power,
     threshold_mark,
 )
 from embersift.recipe import Recipe
@@ -32,7 +34,7 @@ CROWD = 5000
 
 _ENCLOSED = 0.8  # share of a fate's black holes inside its outline
 _FEW = 200  # a fate with fewer is drawn hole by hole, also over shading
-_MSTAR = r"Stellar mass,  $\log_{10}\,M_\star$ [M$_\odot$]"
+_MSTAR = r"Stellar mass,  $\log_{10}\,M_*$ [M$_\odot$]"
 
 
 def light(
@@ -76,7 +78,9 @@ def light(
     handles += _running_median(ax, x, np.where(view.accreting, background, np.nan))
     if chosen.screen.floor > 0.0:
         ax.axhline(np.log10(chosen.screen.floor), color=SOFT_INK, linewidth=0.9, zorder=1.5)
-        handles.append(_line(f"floor {chosen.screen.floor:.3g} erg s$^{{-1}}$", SOFT_INK, "-", 0.9))
+        handles.append(
+            _line(f"floor {power(chosen.screen.floor)} erg s$^{{-1}}$", SOFT_INK, "-", 0.9)
+        )
     dress(
         ax,
         x=_MSTAR,
@@ -161,10 +165,10 @@ def background_words(recipe: Recipe) -> str:
     """The background laws by name."""
     chosen = recipe.background
     if chosen.total is not None:
-        return chosen.total
+        return plain(chosen.total)
     binaries = (chosen.hmxb, chosen.lmxb) if chosen.binaries is None else (chosen.binaries,)
     names = dict.fromkeys(n for n in (*binaries, chosen.gas) if n != "none")
-    return " + ".join(names) or "no background"
+    return plain(" + ".join(names) or "no background")
 
 
 def _agn_laws(recipe: Recipe) -> str:
@@ -245,7 +249,7 @@ def _marks(ax: Axes, x: Array, y: Array, mark: Mark, name: str) -> None:
         marker=mark.shape,
         c=PAPER if mark.open else mark.colour,
         edgecolors=SOFT_INK if mark.open else INK,
-        linewidths=0.5 if mark.open else 0.3,
+        linewidths=0.5 if mark.open else 0.25,
         alpha=0.95 if few else 0.8,
         zorder=2.0 + 0.1 * GROUPS.index(name),
         label=mark.label,
@@ -275,7 +279,7 @@ def _outline(
     high: tuple[float, float],
 ) -> None:
     """The contour that holds most of the points, and the mark at their densest place."""
-    from matplotlib.patheffects import withStroke
+    from matplotlib.patheffects import AbstractPathEffect, withStroke
     from scipy.ndimage import gaussian_filter
 
     n = 70
@@ -287,11 +291,11 @@ def _outline(
     level = ranked[np.searchsorted(np.cumsum(ranked), _ENCLOSED * ranked.sum())]
     xc, yc = 0.5 * (xe[1:] + xe[:-1]), 0.5 * (ye[1:] + ye[:-1])
     colour = SOFT_INK if mark.open else mark.colour
-    casing = [withStroke(linewidth=3.4, foreground=PAPER)]
+    casing: list[AbstractPathEffect] = [withStroke(linewidth=3.4, foreground=PAPER)]
     lines = ax.contour(
         xc, yc, smooth.T, levels=[level], colors=[colour], linewidths=1.7, zorder=3.0
     )
-    lines.set_linestyle(mark.line)
+    lines.set_linestyle(cast(Any, mark.line))
     lines.set_path_effects(casing)
     i, j = np.unravel_index(np.argmax(smooth), smooth.shape)
     ax.plot(

@@ -13,9 +13,10 @@ from embersift.arrays import Array, Mask
 from embersift.catalogue import Layout, Sources, column_names, layout, numbers
 from embersift.columns import fate_column
 from embersift.errors import CatalogueError, RecipeError, did_you_mean
+from embersift.figures.style import power
 from embersift.recipe import Observation, Recipe
 from embersift.screening import fates_of_table, tally
-from embersift.tally import split_fate_column
+from embersift.tallying import split_fate_column
 from embersift.verdict import CRITERIA, DORMANT, FATES, VISIBLE
 
 if TYPE_CHECKING:
@@ -196,6 +197,6 @@ class View(NamedTuple):
         """What is looked at, for the line above the axes."""
         limit = self.observation.flux_limit
         words = f"{self.observation.name}: {self.observation.band} observed, " + (
-            f"limit {limit:g} erg s$^{{-1}}$ cm$^{{-2}}$" if limit > 0.0 else "no flux limit"
+            f"limit {power(limit)} erg s$^{{-1}}$ cm$^{{-2}}$" if limit > 0.0 else "no flux limit"
         )
         return words + (f", threshold {self.threshold:g}" if threshold else "")

@@ -25,6 +25,8 @@ __all__ = [
     "Mark",
     "dress",
     "new_axes",
+    "plain",
+    "power",
     "require_matplotlib",
     "threshold_mark",
 ]
@@ -74,6 +76,27 @@ THRESHOLD_MARKS: tuple[Mark, ...] = (
 def threshold_mark(place: int) -> Mark:
     """The mark of the n-th threshold; with very many they repeat."""
     return THRESHOLD_MARKS[place % len(THRESHOLD_MARKS)]
+
+
+def plain(words: str) -> str:
+    """Words of the user's own, kept from being read as mathematics."""
+    return words.replace("$", r"\$")
+
+
+def power(value: float) -> str:
+    """A number as a label writes it: powers of ten as such.
+
+    Examples
+    --------
+    >>> power(1e39), power(3.5e-16), power(20.0)
+    ('$10^{39}$', '$3.5\\\\times10^{-16}$', '20')
+    """
+    if 1e-3 <= abs(value) < 1e5 or value == 0.0:
+        return f"{value:g}"
+    digits, exponent = f"{value:.3e}".split("e")
+    front = f"{float(digits):g}"
+    times = "" if front == "1" else f"{front}\\times"
+    return f"${times}10^{{{int(exponent)}}}$"
 
 
 def require_matplotlib() -> None:

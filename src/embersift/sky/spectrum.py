@@ -40,7 +40,7 @@ def power_law_ratio(gamma: float, wanted: Band, given: Band) -> float:
 
     Examples
     --------
-    >>> round(power_law_ratio(1.8, SOFT, HARD), 4)
+    >>> round(power_law_ratio(1.8, Band(0.5, 2.0), Band(2.0, 10.0)), 4)
     0.6377
     """
     return power_law_integral(gamma, wanted) / power_law_integral(gamma, given)
