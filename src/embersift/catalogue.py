@@ -26,7 +26,16 @@ from embersift.sky.absorption import THICK
 from embersift.sky.distance import FlatUniverse
 from embersift.units import Conversion, conversion
 
-__all__ = ["MISSING_WORDS", "Column", "Layout", "Sources", "column_names", "layout", "numbers"]
+__all__ = [
+    "MISSING_WORDS",
+    "Column",
+    "Layout",
+    "Raw",
+    "Sources",
+    "column_names",
+    "layout",
+    "numbers",
+]
 
 MISSING_WORDS = ("", "nan", "na", "n/a", "null", "none", "--", "-", "masked", "<na>")
 # how far a stated distance may be from the one of the stated redshift before the row is marked
@@ -72,6 +81,14 @@ def column_names(table: Any) -> list[str]:
     return [str(name) for name in names]
 
 
+def _as_array(column: Any) -> Any:
+    """A pandas column of plain numbers as numpy sees it, without a copy; others as they are."""
+    dtype = getattr(column, "dtype", None)
+    if hasattr(column, "iloc") and isinstance(dtype, np.dtype) and dtype.kind in "fiu":
+        return column.to_numpy()
+    return column
+
+
 class Numbers(NamedTuple):
     values: Array
     missing: Mask
@@ -93,6 +110,14 @@ def numbers(column: Any, sentinels: Sequence[float] = ()) -> Numbers:
     Numbers
         `values` is NaN where `missing` or `not_a_number`.
     """
+    if type(column) is np.ndarray and column.dtype == np.float64 and column.ndim == 1:
+        values = column.copy()
+        missing = np.isnan(values)
+        for sentinel in sentinels:
+            missing |= values == sentinel
+        if sentinels:
+            values[missing] = np.nan
+        return Numbers(values, missing, np.zeros(values.size, dtype=bool))
     import pandas as pd
 
     mask = np.ma.getmaskarray(column) if isinstance(column, np.ma.MaskedArray) else None
@@ -142,6 +167,28 @@ def numbers(column: Any, sentinels: Sequence[float] = ()) -> Numbers:
 
 
 @dataclass(frozen=True)
+class Raw:
+    """Columns of a table as they stand, and how many rows they have."""
+
+    columns: Mapping[str, Any]
+    rows: int
+
+    def __len__(self) -> int:
+        return self.rows
+
+    def __getitem__(self, name: str) -> Any:
+        return self.columns[name]
+
+    def part(self, rows: slice) -> Raw:
+        """Some of the rows, in their order."""
+        cut = {
+            name: column.iloc[rows] if hasattr(column, "iloc") else column[rows]
+            for name, column in self.columns.items()
+        }
+        return Raw(cut, len(range(*rows.indices(self.rows))))
+
+
+@dataclass(frozen=True)
 class Layout:
     """Which column of a catalogue holds which quantity; made by `layout`.
 
@@ -166,14 +213,26 @@ class Layout:
             raise CatalogueError(f"{self.origin}: column {found.column!r}: {error}") from None
         return got._replace(values=found.convert(got.values))
 
+    def raw_columns(self, table: Any) -> Raw:
+        """The columns of numbers, as they stand, ready to be cut into blocks cheaply."""
+        needed = [c.column for c in self.columns.values() if INPUT[c.quantity].numeric]
+        return Raw({name: _as_array(table[name]) for name in needed}, len(table))
+
     def take(self, table: Any) -> Sources:
-        """Turn a block of rows into arrays, marking every row with a problem."""
+        """Turn a block of rows into arrays, marking every row with a problem.
+
+        Parameters
+        ----------
+        table : DataFrame, Table or Raw
+            The block; each row is read by itself.
+        """
         rows = len(table)
         problems: Bits = np.zeros(rows, dtype=np.uint64)
 
         def mark(where: Mask, quantity: str, reason: str) -> None:
+            # problems are rare: a handful of indices is cheaper than a mask over the block
             if where.any():
-                problems[where] |= bit(quantity, reason)
+                problems[np.flatnonzero(where)] |= bit(quantity, reason)
 
         def read(
             quantity: str, *, missing: str | None = "missing", sign: str = "", suffix: str = ""
@@ -182,16 +241,20 @@ class Layout:
             if got is None:
                 return None
             values = got.values
+            if rows:
+                low, high = values.min(), values.max()  # NaN when any value is missing
+                if high < np.inf and (low > 0.0 or (low == 0.0 and sign != "not positive")):
+                    return values
             if missing:
                 mark(got.missing, quantity, missing)
             mark(got.not_a_number, quantity, "not a number" + suffix)
             infinite = np.isinf(values)
             mark(infinite, quantity, "not finite" + suffix)
-            values[infinite] = np.nan
+            np.putmask(values, infinite, np.nan)
             if sign:
-                wrong = values <= 0.0 if sign.startswith("not positive") else values < 0.0
+                wrong = values <= 0.0 if sign == "not positive" else values < 0.0
                 mark(wrong, quantity, sign + suffix)
-                values[wrong] = np.nan
+                np.putmask(values, wrong, np.nan)
             return values
 
         def needed(values: Array | None) -> Array:
@@ -203,14 +266,15 @@ class Layout:
         mbh = needed(read("mbh", missing=None, sign="negative"))
         # a blank mass says that there is no hole; an impossible one leaves it open
         impossible = bit("mbh", "not a number") | bit("mbh", "not finite") | bit("mbh", "negative")
-        hole_unknown = (problems & impossible) > 0
-        mbh = np.where(np.isnan(mbh) & ~hole_unknown, 0.0, mbh)
+        blank_mass = np.isnan(mbh)
+        if blank_mass.any():
+            np.putmask(mbh, blank_mass & ((problems & impossible) == 0), 0.0)
         no_hole = mbh == 0.0
 
         before = problems.copy()
         mdot = needed(read("mdot", sign="negative"))
         # a rate is not needed where there is no hole to take it in
-        problems[no_hole] = before[no_hole]
+        np.copyto(problems, before, where=no_hole)
         mark(no_hole & (mdot > 0.0), "mdot", "positive without a black hole")
 
         z, distance = self._place(table, read, mark, rows)

@@ -7,7 +7,7 @@ the block size nor the number of threads can change it.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cached_property
@@ -182,6 +182,10 @@ class Chain:
         """Law names by bit of `Screened.stretched`."""
         return tuple(law.name for law in self.laws)
 
+    def stretched_text(self, bits: int) -> str:
+        """The text of the column `stretched` for one row's bits."""
+        return "|".join(word for i, word in enumerate(self.stretched_words) if bits >> i & 1)
+
     @property
     def fate_columns(self) -> tuple[str, ...]:
         return tuple(
@@ -199,8 +203,9 @@ class Chain:
             mdot = inflow_from_growth(mdot, self._growth_efficiency)
         eddington = sources.mbh * EDDINGTON_PER_MSUN
         with np.errstate(divide="ignore", invalid="ignore"):
-            rate = mdot * RATE_TO_LUMINOSITY / eddington
-            rate[sources.mbh == 0.0] = np.nan
+            rate = mdot * RATE_TO_LUMINOSITY
+            rate /= eddington
+            np.putmask(rate, sources.mbh == 0.0, np.nan)
             ratio = self._accretion.eddington_ratio(rate, self._disc)
         return ratio * eddington, ratio, rate
 
@@ -220,10 +225,13 @@ class Chain:
     ) -> Fluxes:
         """What one observation receives of the black hole and of its host."""
         agn_gamma, gamma = self.recipe.agn.gamma, self.recipe.background.gamma
+        shift = np.exp((2.0 - agn_gamma) * u)
         agn = lx_agn * view.agn_share
-        agn *= np.exp((2.0 - agn_gamma) * u)
-        hidden = sources.nh > 0.0
-        if hidden.any():
+        agn *= shift
+        clear = sources.nh == 0.0
+        if not clear.all():
+            # a column that is not known must not look like none
+            hidden = ~clear
             passed = np.full(u.shape, view.agn_passed)
             passed[hidden] = power_law_transmission(
                 agn_gamma,
@@ -236,10 +244,8 @@ class Chain:
         elif view.agn_passed != 1.0:
             agn *= view.agn_passed
         agn /= area
-        # NaN columns (an nh that is no number) must not look unabsorbed
-        agn[np.isnan(sources.nh)] = np.nan
         background = host.point_like * (view.binaries_share * view.binaries_passed)
-        background *= np.exp((2.0 - gamma) * u)
+        background *= shift if gamma == agn_gamma else np.exp((2.0 - gamma) * u)
         if view.gas_log_share is not None:
             background += host.gas_soft * np.exp(view.gas_log_share(u))
         background /= area
@@ -247,7 +253,9 @@ class Chain:
             background *= share_in_circle(sources, view.observation.aperture)
         with np.errstate(divide="ignore", invalid="ignore"):
             excess = agn / background
-        excess[(agn == 0.0) & (background == 0.0)] = 0.0
+        dark = background == 0.0
+        if dark.any():
+            excess[dark & (agn == 0.0)] = 0.0
         if self.recipe.screen.criterion == "total":
             excess += 1.0
         return Fluxes(agn, background, excess)
@@ -348,23 +356,45 @@ class Chain:
         rows = sources.mstar.size
         result = self._empty(rows)
 
-        def step(start: int) -> None:
-            part = slice(start, min(start + chunk, rows))
+        def step(part: slice) -> None:
             _store(self.run_block(sources.rows(part)), result, part)
 
-        starts = range(0, rows, chunk)
-        if threads < 2 or len(starts) < 2:
-            for start in starts:
-                step(start)
-        else:
-            with ThreadPoolExecutor(threads) as pool:
-                for _ in pool.map(step, starts):
-                    pass
+        each_chunk(rows, chunk, threads, step)
         if host is not None:
-            for view in self._views:
-                if view.observation.aperture is not None:
-                    self._blend(view, view.observation.aperture, sources, host, result)
+            self.blend(sources, host, result)
         return result
+
+    def run_catalogue(
+        self, rows: int, block: Callable[[slice], Sources], *, threads: int = 2, chunk: int = CHUNK
+    ) -> tuple[Sources, Screened]:
+        """`run` for a table that is turned into sources chunk by chunk, while it is in the cache.
+
+        Parameters
+        ----------
+        rows : int
+            Rows of the table.
+        block : callable
+            Gives the sources of a slice of rows.
+        """
+        result = self._empty(rows)
+        numbers = [np.empty(rows) for _ in Sources._fields[:-1]]
+        named = dict(zip(Sources._fields[:-1], numbers, strict=True))
+        sources = Sources(**named, problems=result.problems)
+
+        def step(part: slice) -> None:
+            taken = block(part)
+            for values, target in zip(taken[:-1], numbers, strict=True):
+                target[part] = values
+            _store(self.run_block(taken), result, part)
+
+        each_chunk(rows, chunk, threads, step)
+        return sources, result
+
+    def blend(self, sources: Sources, host: NDArray[np.uint64], result: Screened) -> None:
+        """Judge anew, in place, the holes of one galaxy that share an extraction circle."""
+        for view in self._views:
+            if view.observation.aperture is not None:
+                self._blend(view, view.observation.aperture, sources, host, result)
 
     def _blend(
         self,
@@ -414,6 +444,18 @@ class Chain:
             stretched=np.empty(rows, dtype=np.uint32),
             problems=np.empty(rows, dtype=np.uint64),
         )
+
+
+def each_chunk(rows: int, chunk: int, threads: int, step: Callable[[slice], None]) -> None:
+    """Do a step for every chunk of rows, in threads; the first error is raised."""
+    parts = [slice(start, min(start + chunk, rows)) for start in range(0, rows, chunk)]
+    if threads < 2 or len(parts) < 2:
+        for part in parts:
+            step(part)
+        return
+    with ThreadPoolExecutor(threads) as pool:
+        for _ in pool.map(step, parts):
+            pass
 
 
 def _arrays(screened: Screened) -> Iterator[NDArray[np.generic]]:

@@ -67,13 +67,22 @@ class _Role:
         given = self.law.formula(
             self.host(sources, age), values.get(self.law.name, self.law.values)
         )
-        light = {part: given[part] * self.to_hard for part in self.parts}
+        light: dict[Part, Array] = {}
+        for part in self.parts:
+            light[part] = given[part]
+            light[part] *= self.to_hard  # a formula's arrays are its own: nobody else holds them
         if self.fallback is not None:
-            blank = np.isnan(sources.oh12)
-            if blank.any():
-                other = self.fallback.light(sources, age, values)
+            blank = np.flatnonzero(np.isnan(sources.oh12))
+            if blank.size:
+                few = sources._replace(
+                    mstar=sources.mstar[blank],
+                    sfr=sources.sfr[blank],
+                    oh12=sources.oh12[blank],
+                    z=sources.z[blank],
+                )
+                other = self.fallback.light(few, age, values)
                 for part in self.parts:
-                    light[part] = np.where(blank, other[part], light[part])
+                    light[part][blank] = other[part]
         return light
 
 
@@ -203,20 +212,23 @@ class Background:
         parts: dict[Part, Array] = {}
         for role in self._roles:
             parts.update(role.light(sources, self._age, values or {}))
-        zero = np.where(np.isfinite(sources.mstar) & np.isfinite(sources.sfr), 0.0, np.nan)
-        gas_soft = parts.get("gas", zero)
         whole = parts.get("total")
+        if "gas" in parts:
+            gas_soft = parts["gas"]
+        else:
+            # a part that is left out is dark, but only in galaxies that are known at all
+            gas_soft = np.where(np.isfinite(sources.mstar) & np.isfinite(sources.sfr), 0.0, np.nan)
         if whole is None:
             gas = gas_soft * self._spectrum.ratio(HARD, SOFT)
-            hmxb, lmxb = parts.get("hmxb", zero), parts.get("lmxb", zero)
+            hmxb, lmxb = parts["hmxb"], parts["lmxb"]
             point_like = hmxb + lmxb
             return HostLight(hmxb, lmxb, gas, point_like + gas, point_like, gas_soft)
-        unknown = np.full(zero.shape, np.nan)
+        unknown = np.full(whole.shape, np.nan)
         if "gas" in parts or not self._recipe.background.total:
             # a law of both binaries in one number, beside a gas law
             gas = gas_soft * self._spectrum.ratio(HARD, SOFT)
             return HostLight(unknown, unknown, gas, whole + gas, whole, gas_soft)
-        return HostLight(unknown, unknown, unknown, whole, whole, zero)
+        return HostLight(unknown, unknown, unknown, whole, whole, gas_soft)
 
     def stretched(self, sources: Sources) -> Iterator[tuple[BackgroundLaw, Mask]]:
         """Each law with the rows in which it served outside its calibrated range."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, TypeVar
 
@@ -19,6 +19,8 @@ from embersift.problems import problem_text
 from embersift.recipe import Recipe
 from embersift.tallying import count, split_fate_column
 from embersift.verdict import FATES
+
+_FEW = 1 << 12
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -99,9 +101,13 @@ def screen_table(
     if len(table) == 0:
         raise CatalogueError(f"{origin}: the table has columns and no rows; nothing to screen.")
     suspicion(plan, table)
-    sources = plan.take(table)
+    raw = plan.raw_columns(table)
+    sources, result = chain.run_catalogue(
+        len(table), lambda part: plan.take(raw.part(part)), threads=threads
+    )
     host = host_numbers(table, plan) if chain.blends_hosts else None
-    result = chain.run(sources, host=host, threads=threads)
+    if host is not None:
+        chain.blend(sources, host, result)
     return Screening(attach(table, chain, result), chain, plan, sources, result)
 
 
@@ -119,30 +125,37 @@ def result_columns(chain: Chain, result: Screened) -> dict[str, Any]:
     """The output columns of a block by name: float arrays, and Categoricals for words."""
     import pandas as pd
 
+    fates = pd.Index(FATES)
     columns: dict[str, Any] = dict(result.luminosities._asdict())
     for name, seen in result.fluxes.items():
         columns[f"flux_agn_{name}"] = seen.agn
         columns[f"flux_background_{name}"] = seen.background
         columns[f"excess_{name}"] = seen.excess
     for name, codes in result.fates.items():
-        columns[name] = pd.Categorical.from_codes(codes, categories=pd.Index(FATES))
-    columns["stretched"] = _words(
-        result.stretched,
-        lambda bits: "|".join(
-            word for i, word in enumerate(chain.stretched_words) if bits >> i & 1
-        ),
-    )
+        columns[name] = pd.Categorical.from_codes(codes, categories=fates, validate=False)
+    columns["stretched"] = _words(result.stretched, chain.stretched_text)
     columns["problem"] = _words(result.problems, problem_text)
     return columns
 
 
-def _words(bits: Any, text: Any) -> Any:
+def _words(bits: NDArray[np.unsignedinteger[Any]], text: Callable[[int], str]) -> Any:
     """Bit patterns to text: each pattern that occurs is spelled once."""
     import pandas as pd
 
-    # sorting 1e6 integers costs more than the whole chain; hashing does not
-    codes, patterns = pd.factorize(bits)
-    return pd.Categorical.from_codes(codes, categories=pd.Index([text(int(p)) for p in patterns]))
+    if bits.size and int(bits.max()) < _FEW:
+        # small patterns index a table, which is many times faster than hashing a million of them
+        patterns = np.flatnonzero(np.bincount(bits.astype(np.intp)))
+        place = np.zeros(_FEW, dtype=np.int16)
+        place[patterns] = np.arange(patterns.size)
+        codes = place[bits]
+    else:
+        marked = np.flatnonzero(bits)
+        codes = np.zeros(bits.size, dtype=np.int16)
+        found, others = pd.factorize(bits[marked])
+        codes[marked] = found + 1
+        patterns = np.concatenate(([0], others))
+    words = pd.Index([text(int(pattern)) for pattern in patterns])
+    return pd.Categorical.from_codes(codes, categories=words, validate=False)
 
 
 def attach(table: Any, chain: Chain, result: Screened) -> Any:
@@ -153,8 +166,9 @@ def attach(table: Any, chain: Chain, result: Screened) -> Any:
     declared = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
     columns = result_columns(chain, result)
     if isinstance(table, pd.DataFrame):
-        added = pd.DataFrame(columns, index=table.index, copy=False)
-        screened = pd.concat([table, added[[c.name for c in declared]]], axis=1)
+        ordered = {c.name: columns[c.name] for c in declared}
+        added = pd.DataFrame(ordered, index=table.index, copy=False)
+        screened = pd.concat([table, added], axis=1)
         units = dict(table.attrs.get("units", {}))
         screened.attrs = {
             **table.attrs,

@@ -77,7 +77,8 @@ def straightforward(table: pd.DataFrame) -> pd.DataFrame:
             (out["lx_hmxb"] + out["lx_lmxb"]) * shift + soft_gas * gas_flux
         ) / area
         out["excess_any"] = out["flux_agn_any"] / out["flux_background_any"]
-        bad = ~((mstar > 0) & (sfr >= 0) & (mdot >= 0) & np.isfinite(mdot) & (z > 0))
+        fed = ((mdot >= 0) & np.isfinite(mdot)) | (mbh == 0)
+        bad = ~((mstar > 0) & (sfr >= 0) & fed & (z > 0))
         for t in (1, 2, 5):
             under = (out["lx_agn"] < 1e39).to_numpy()
             outshone = (out["excess_any"] < t).to_numpy()

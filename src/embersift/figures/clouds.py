@@ -34,6 +34,7 @@ CROWD = 5000
 
 _ENCLOSED = 0.8  # share of a fate's black holes inside its outline
 _FEW = 200  # a fate with fewer is drawn hole by hole, also over shading
+_SHADES = ["#f4f1ea", "#d3cabb", "#b5ada3", "#938c86"]
 _MSTAR = r"Stellar mass,  $\log_{10}\,M_*$ [M$_\odot$]"
 
 
@@ -259,8 +260,8 @@ def _marks(ax: Axes, x: Array, y: Array, mark: Mark, name: str) -> None:
 def _shade(ax: Axes, x: Array, y: Array) -> None:
     from matplotlib.colors import LinearSegmentedColormap, LogNorm
 
-    # stays light, so that outlines and marks show on top
-    ramp = LinearSegmentedColormap.from_list("ember", ["#f4f1ea", "#d3cabb", "#a59c92", "#77716f"])
+    # stays light, so that outlines and marks show on top; above 50 steps the bar would be an image
+    ramp = LinearSegmentedColormap.from_list("ember", _SHADES, N=32)
     cells = ax.hexbin(
         x, y, gridsize=(46, 30), mincnt=1, cmap=ramp, norm=LogNorm(), linewidths=0.15, zorder=1.0
     )

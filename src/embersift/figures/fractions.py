@@ -151,7 +151,7 @@ def causes(
         y="Share of the hidden black holes",
         title=f"{view.words()}\nnumbers at the top: hidden black holes in the bin",
         handles=handles,
-        columns=2 if any("+" in str(handle.get_label()) for handle in handles) else 3,
+        columns=3,
     )
     return ax
 

@@ -1,4 +1,4 @@
-"""Fluxes against the limit, and what another limit would do: verdicts made again from the fluxes."""
+"""Fluxes against the limit, and what another limit would do: judged again from the fluxes."""
 
 from __future__ import annotations
 
@@ -115,7 +115,7 @@ def depth(
     known = known[np.isfinite(known)]
     handles: list[Any] = []
     if known.size:
-        ends = [*np.percentile(known, [10.0, 99.9])]
+        ends = [np.percentile(known, 10.0), known.max()]
         if limit > 0.0:
             ends += [np.log10(limit) - 0.5, np.log10(limit) + 0.5]
         grid = np.linspace(np.floor(min(ends)), np.ceil(max(ends)), 161)

@@ -104,16 +104,20 @@ class Reading:
         """
         name = fate_column(observation, threshold)
         if name not in self._fates:
-            if name not in self.names:
-                there = [n for n in self.names if split_fate_column(n) is not None]
-                if not there:
-                    fates_of_table(self.table, [], "the table")  # says what a screened table is
-                raise CatalogueError(
-                    f"The table has no column {name}. Verdicts in it: {', '.join(there)}. Choose "
-                    "one of those observations and thresholds, or screen again with this one."
-                )
+            self._require_verdict(name)
             self._fates.update(fates_of_table(self.table, [name], "the table"))
         return self._fates[name]
+
+    def _require_verdict(self, name: str) -> None:
+        if name in self.names:
+            return
+        there = [n for n in self.names if split_fate_column(n) is not None]
+        if not there:
+            fates_of_table(self.table, [], "the table")  # says what a screened table is
+        raise CatalogueError(
+            f"The table has no column {name}. Verdicts in it: {', '.join(there)}. Choose one of "
+            "those observations and thresholds, or screen again with this one."
+        )
 
     def column(self, name: str) -> Array:
         """A number column that the screening wrote."""
@@ -145,9 +149,9 @@ class Reading:
             raise RecipeError(
                 f"The recipe has no observation {name!r}. {did_you_mean(name, known)}"
             )
-        return View(
-            self, known[name], self.recipe.screen.headline if threshold is None else threshold
-        )
+        factor = self.recipe.screen.headline if threshold is None else float(threshold)
+        self._require_verdict(fate_column(name, factor))
+        return View(self, known[name], factor)
 
 
 class View(NamedTuple):

@@ -6,6 +6,8 @@ colour-blind readers; shape, line and hatch say the same once more.
 
 from __future__ import annotations
 
+import re
+import textwrap
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -32,6 +34,7 @@ __all__ = [
 ]
 
 INK, SOFT_INK, RULE, PAPER = "#1d2430", "#59616e", "#d5d8dd", "#ffffff"
+_SMALL = 8.5  # points
 
 
 class FiguresMissing(EmbersiftError):
@@ -139,6 +142,8 @@ def dress(ax: Axes, *, x: str, y: str, title: str, handles: Any = (), columns: i
     ax.set_xlabel(x, fontsize=9.5, color=INK, linespacing=1.35)
     ax.set_ylabel(y, fontsize=9.5, color=INK, linespacing=1.35)
     handles = list(handles)
+    room = 1.1 * ax.get_window_extent().width / ax.figure.dpi * 72.0
+    title = "\n".join(textwrap.fill(line, int(room / 5.0) + 16) for line in title.split("\n"))
     if not handles:
         ax.set_title(title, loc="left", fontsize=9.5, color=INK)
         return
@@ -149,9 +154,9 @@ def dress(ax: Axes, *, x: str, y: str, title: str, handles: Any = (), columns: i
         bbox_to_anchor=(0.0, 1.0),
         borderaxespad=0.2,
         borderpad=0.0,
-        ncols=min(columns, len(handles)),
+        ncols=_columns(handles, room, columns),
         frameon=False,
-        fontsize=8.5,
+        fontsize=_SMALL,
         title_fontsize=9.5,
         alignment="left",
         handlelength=2.4,
@@ -159,3 +164,11 @@ def dress(ax: Axes, *, x: str, y: str, title: str, handles: Any = (), columns: i
         labelcolor=INK,
     )
     legend.get_title().set_color(INK)
+
+
+def _columns(handles: list[Any], room: float, most: int) -> int:
+    """Columns of a legend that fit into so many points, or else the axes would be squeezed."""
+    widest = max(len(re.sub(r"[$\\^{}]|times", "", str(h.get_label()))) for h in handles)
+    # letters are some 0.57 em wide; handle, its gap and the gap between columns are 4.6 em
+    column = _SMALL * (0.57 * widest + 4.6)
+    return max(1, min(most, len(handles), int(room / column)))

