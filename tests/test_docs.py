@@ -56,6 +56,9 @@ def test_the_worked_example_of_the_readme_runs(tmp_path, monkeypatch):
     for line in block("run", "own").strip().splitlines():
         result = CliRunner().invoke(app, shlex.split(line)[1:])
         assert result.exit_code == 0, result.output
+    for line in block("run", "look").strip().splitlines():
+        result = CliRunner().invoke(app, shlex.split(line)[1:])
+        assert result.exit_code == 0, result.output
     text = Path("simulation.screened.csv").read_text()
     assert text.splitlines()[1].startswith("007,")
 

@@ -208,6 +208,64 @@ def check(
 
 @app.command()
 @_speaks
+def draw(
+    screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
+    figure: Annotated[
+        str | None,
+        typer.Option("--figure", "-f", help="Which figure; without it, the list of them."),
+    ] = None,
+    out: Annotated[
+        Path | None, typer.Option("--out", "-o", help="Picture: .png, .pdf or .svg.")
+    ] = None,
+    observation: Annotated[
+        str | None, typer.Option("--observation", help="Observation (default: the first).")
+    ] = None,
+    threshold: Annotated[
+        float | None, typer.Option("--threshold", "-t", help="Threshold (default: the headline).")
+    ] = None,
+    overwrite: Overwrite = False,
+) -> None:
+    """Draw a figure from a screened table (extra: figures)."""
+    from embersift.figures import FIGURES
+    from embersift.figures import draw as draw_figure
+
+    if figure is None:
+        _print([f"{name:<10}{kind.title}: {kind.shows}" for name, kind in FIGURES.items()])
+        return
+    if out is None:
+        raise RecipeError("--out is needed: the picture's file, ending in .png, .pdf or .svg.")
+    from embersift.running import recipe_of
+    from embersift.tables import read_table
+
+    table, behind = read_table(screened), recipe_of(screened)
+    draw_figure(
+        table, behind, figure, out,
+        observation=observation, threshold=threshold, overwrite=overwrite,
+    )  # fmt: skip
+    typer.echo(f"Wrote {out}")
+
+
+@app.command()
+@_speaks
+def report(
+    screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
+    out: Annotated[Path, typer.Option("--out", "-o", help="The page, .html.")],
+    overwrite: Overwrite = False,
+) -> None:
+    """Write one self-contained page to share: answer, figures, laws, cautions, recipe."""
+    from embersift.report import report as write_report
+    from embersift.running import recipe_of
+    from embersift.tables import read_provenance, read_table
+
+    write_report(
+        read_table(screened), recipe_of(screened), read_provenance(screened), out,
+        title=screened.name, overwrite=overwrite,
+    )  # fmt: skip
+    typer.echo(f"Wrote {out}")
+
+
+@app.command()
+@_speaks
 def laws(
     name: Annotated[str | None, typer.Argument(help="Show everything about this law.")] = None,
     bibtex: Annotated[bool, typer.Option("--bibtex", help="Print BibTeX entries instead.")] = False,

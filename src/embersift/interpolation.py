@@ -38,27 +38,26 @@ class UniformCubic:
         nodes: Array = low + self._step * np.arange(-1.0, cells + 2)
         f: Array = np.asarray(function(nodes))
         before, left, right, after = f[:-3], f[1:-2], f[2:-1], f[3:]
-        # Lagrange form through nodes -1, 0, 1, 2 as a polynomial in t, the place in the cell
-        self._c0 = np.ascontiguousarray(left)
-        self._c1 = -before / 3.0 - left / 2.0 + right - after / 6.0
-        self._c2 = before / 2.0 - left + right / 2.0
-        self._c3 = (after - before) / 6.0 + (left - right) / 2.0
+        # Lagrange form through nodes -1, 0, 1, 2 as a polynomial in t, the place in the cell; one
+        # more cell, flat, for the upper end itself
+        self._c0: Array = np.append(left, f[-2])
+        self._c1: Array = np.append(-before / 3.0 - left / 2.0 + right - after / 6.0, 0.0)
+        self._c2: Array = np.append(before / 2.0 - left + right / 2.0, 0.0)
+        self._c3: Array = np.append((after - before) / 6.0 + (left - right) / 2.0, 0.0)
 
     def __call__(self, x: Array) -> Array:
-        place = (x - self.low) / self._step
-        inside = (place >= 0.0) & (place <= self._cells)
-        if not inside.all():
-            place = np.where(inside, place, 0.0)
-        # take() converts any narrower index on every call
-        cell = np.minimum(place.astype(np.intp), self._cells - 1)
-        t = place - cell
-        y: Array = self._c3.take(cell)
-        y *= t
-        y += self._c2.take(cell)
-        y *= t
-        y += self._c1.take(cell)
-        y *= t
-        y += self._c0.take(cell)
-        if not inside.all():
-            y[~inside] = np.nan
+        place = x - self.low
+        place *= 1.0 / self._step
+        with np.errstate(invalid="ignore"):  # NaN has no cell; its t is NaN, and so is its value
+            cell = place.astype(np.intp)
+        outside = place > self._cells
+        outside |= place < 0.0
+        place -= cell
+        # mode="clip" looks nothing up twice, where the default checks and copies first
+        y: Array = self._c3.take(cell, mode="clip")
+        for coefficient in (self._c2, self._c1, self._c0):
+            y *= place
+            y += coefficient.take(cell, mode="clip")
+        if outside.any():
+            y[outside] = np.nan
         return y

@@ -1,4 +1,4 @@
-"""The inverse of a law: the lowest argument above which a function stays at or above a goal.
+"""Laws from right to left: the lowest argument above which a function stays at or above a goal.
 
 A law may step down at a joint or dip between two branches, so "where it reaches the goal" can be
 several places. What a proposal needs is the last of them: beyond it every brighter accretor passes.
@@ -7,18 +7,29 @@ several places. What a proposal needs is the last of them: beyond it every brigh
 from __future__ import annotations
 
 from collections.abc import Callable
+from functools import cached_property
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from embersift.arrays import Array, Mask
+from embersift.catalogue import Sources
+from embersift.chain import Chain
+from embersift.constants import EDDINGTON_PER_MSUN, RATE_TO_LUMINOSITY
+from embersift.errors import LawError
 
-__all__ = ["ABOVE", "BELOW", "INSIDE", "Curve", "Crossing"]
+__all__ = ["ABOVE", "BELOW", "INSIDE", "MARGIN", "Crossing", "Curve", "Inverse"]
 
 INSIDE, BELOW, ABOVE = range(3)
 """Where the goal is reached: in the range searched, below all of it, or nowhere up to its end."""
 
+MARGIN = 1.0 + 8.0 * float(np.finfo(float).eps)
+"""What is asked for is this much more than needed, so that it passes by rounding too."""
+_LBOL = (1e20, 1e55)  # erg/s
+_RATIO = (1e-20, 1e6)
+_RATE = (1e-12, 1e7)  # L_Edd / c2
+_MASS = (1e-2, 1e15)  # Msun
 _PER_DECADE = 400
 _JOINT_DEX = 1e-6  # a bend or step this large gets nodes of its own
 
@@ -142,3 +153,118 @@ def _refined(
         high[left[passed]] = middle[passed]
         low[left[~passed]] = middle[~passed]
     return high
+
+
+class Inverse:
+    """The laws of a chain from right to left.
+
+    Parameters
+    ----------
+    chain : Chain
+        Its bolometric and accretion laws are inverted.
+
+    Raises
+    ------
+    LawError
+        The bolometric law mixes mass, luminosity and Eddington ratio, which none built in does.
+    """
+
+    def __init__(self, chain: Chain) -> None:
+        self._chain = chain
+        # what a law does not depend on may be missing without a trace in k
+        given = {"lbol": 1e44, "ratio": 1e-2, "mbh": 1e7}
+
+        def enough(quantity: str) -> bool:
+            lbol, ratio, mbh = (
+                np.array([value if name == quantity else np.nan]) for name, value in given.items()
+            )
+            with np.errstate(invalid="ignore"):
+                k = chain._bolometric.formula(lbol, ratio, mbh, chain._bolometric_values)
+            return bool(np.isfinite(k[0]))
+
+        self.by_mass = enough("mbh")
+        self.by_ratio = not self.by_mass and enough("ratio")
+        if not (self.by_mass or self.by_ratio or enough("lbol")):
+            raise LawError(
+                f"the bolometric law {chain._bolometric.name} depends on several quantities at "
+                "once and cannot be inverted."
+            )
+
+    def _ratio_of_rate(self, rate: Array) -> Array:
+        return self._chain._accretion.eddington_ratio(rate, self._chain._disc)
+
+    def _lx_of_lbol(self, lbol: Array) -> Array:
+        unknown = np.full(lbol.shape, np.nan)
+        return self._chain.agn_light(lbol, unknown, unknown)
+
+    def _lx_of_ratio(self, ratio: Array) -> Array:
+        """L(2-10 keV) in units of the Eddington luminosity."""
+        return self._chain.agn_light(ratio, ratio, np.full(ratio.shape, np.nan))
+
+    @cached_property
+    def _rates(self) -> Curve:
+        return Curve(self._ratio_of_rate, *_RATE)
+
+    @cached_property
+    def _luminosities(self) -> Curve:
+        return Curve(self._lx_of_lbol, *_LBOL)
+
+    @cached_property
+    def _ratios(self) -> Curve:
+        return Curve(self._lx_of_ratio, *_RATIO)
+
+    @cached_property
+    def _rates_by_ratio(self) -> Curve:
+        return Curve(lambda rate: self._lx_of_ratio(self._ratio_of_rate(rate)), *_RATE)
+
+    def luminosity(self, lx: Array, mbh: Array) -> Crossing:
+        """Lowest bolometric luminosity [erg/s] that stays at or above `lx`."""
+        if self.by_mass:
+            # L_X is proportional to L_bol at a given mass
+            per_lbol = self._chain.agn_light(np.ones(lx.shape), np.full(lx.shape, np.nan), mbh)
+            lbol = lx / per_lbol * MARGIN
+            place = np.select([lbol < _LBOL[0], lbol > _LBOL[1]], [BELOW, ABOVE], INSIDE)
+            lbol[place != INSIDE] = np.nan
+            return Crossing(lbol, place.astype(np.int8), np.zeros(lx.shape, dtype=bool))
+        if self.by_ratio:
+            eddington = mbh * EDDINGTON_PER_MSUN
+            found = self._ratios.last_crossing(lx / eddington)
+            return found._replace(x=found.x * eddington)
+        return self._luminosities.last_crossing(lx)
+
+    def rate(self, lx: Array, lbol: Array, mbh: Array) -> Crossing:
+        """Lowest inflow [L_Edd/c2] that stays at or above `lx`; `lbol` from `luminosity`."""
+        eddington = mbh * EDDINGTON_PER_MSUN
+        if self.by_ratio:
+            return self._rates_by_ratio.last_crossing(lx / eddington)
+        return self._rates.last_crossing(lbol / eddington)
+
+    def mass(self, lx: Array, ratio: float) -> Array:
+        """Lightest black hole [Msun] that stays at or above `lx` at one Eddington ratio."""
+        if not self.by_mass:
+            if self.by_ratio:
+                per_eddington = self._lx_of_ratio(np.array([ratio]))[0]
+                return np.asarray(lx / (per_eddington * EDDINGTON_PER_MSUN))
+            found = self._luminosities.last_crossing(lx)
+            return np.asarray(found.x / (ratio * EDDINGTON_PER_MSUN))
+
+        def light(mbh: Array) -> Array:
+            lbol = ratio * mbh * EDDINGTON_PER_MSUN
+            return self._chain.agn_light(lbol, np.full(mbh.shape, ratio), mbh)
+
+        return Curve(light, *_MASS).last_crossing(lx).x
+
+    def mdot(self, rate: Array, lx: Array, sources: Sources) -> Array:
+        """The rate in the catalogue's convention [Msun/yr], moved up by rounding where needed."""
+        chain = self._chain
+        mdot = rate * (sources.mbh * EDDINGTON_PER_MSUN / RATE_TO_LUMINOSITY)
+        if chain.recipe.catalogue.rate == "growth":
+            mdot *= 1.0 - chain._growth_efficiency
+        for power in range(12):
+            fed_back = sources._replace(mdot=mdot)
+            lbol, ratio, _ = chain.accretion(fed_back)
+            short = chain.agn_light(lbol, ratio, sources.mbh) < lx
+            if not short.any():
+                break
+            mdot = np.where(short, mdot * (1.0 + 2.0 ** (power - 52)), mdot)
+        return mdot

@@ -18,7 +18,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from functools import cached_property
 from typing import Literal
 
 import numpy as np
@@ -28,15 +27,14 @@ from embersift.arrays import Array, Mask
 from embersift.catalogue import Sources
 from embersift.chain import Chain
 from embersift.columns import fate_column
-from embersift.constants import EDDINGTON_PER_MSUN, MPC, RATE_TO_LUMINOSITY
-from embersift.errors import LawError, RecipeError, did_you_mean
-from embersift.inversion import ABOVE, BELOW, INSIDE, Crossing, Curve
+from embersift.constants import EDDINGTON_PER_MSUN, MPC
+from embersift.errors import RecipeError, did_you_mean
+from embersift.inversion import INSIDE, MARGIN, Inverse
 
 __all__ = [
     "REASONS",
     "SCALINGS",
     "SET_BY",
-    "Inverse",
     "Reach",
     "checked_exposure",
     "reach",
@@ -55,12 +53,6 @@ SCALINGS: Mapping[str, float] = {"background": 0.5, "photon": 1.0}
 
 Scaling = Literal["background", "photon"]
 
-# a few units of the last place more than needed, so that what is reported passes when fed back
-_MARGIN = 1.0 + 8.0 * float(np.finfo(float).eps)
-_LBOL = (1e20, 1e55)  # erg/s
-_RATIO = (1e-20, 1e6)
-_RATE = (1e-12, 1e7)  # L_Edd / c2
-_MASS = (1e-2, 1e15)  # Msun
 _UNKNOWN = 3
 
 
@@ -163,126 +155,6 @@ def scaled_exposure(flux_limit: float, flux: Array, exposure: float, scaling: st
     return longer
 
 
-class Inverse:
-    """The laws of a chain from right to left.
-
-    Parameters
-    ----------
-    chain : Chain
-        Its bolometric and accretion laws are inverted.
-
-    Raises
-    ------
-    LawError
-        The bolometric law mixes mass, luminosity and Eddington ratio, which none built in does.
-    """
-
-    def __init__(self, chain: Chain) -> None:
-        self._chain = chain
-        one, unknown = np.array([1e40]), np.array([np.nan])
-
-        def depends(lbol: Array, ratio: Array, mbh: Array) -> bool:
-            k = chain.agn_light(np.array([1.0]), ratio, mbh)
-            if lbol is not unknown:
-                k = chain.agn_light(lbol, ratio, mbh)
-            return not bool(np.isfinite(k[0]))
-
-        # agn_light divides the luminosity by k, so a k that needs it shows only in the formula
-        k_alone = chain._bolometric.formula
-        values = chain._bolometric_values
-        typical = np.array([1e-2]), np.array([1e6])
-        with np.errstate(invalid="ignore"):
-            self.by_mass = bool(np.isfinite(k_alone(unknown, unknown, typical[1], values))[0])
-            self.by_ratio = not self.by_mass and bool(
-                np.isfinite(k_alone(unknown, typical[0], unknown, values))[0]
-            )
-        self.needs_mass = depends(one, unknown, unknown)
-        if self.needs_mass and not (self.by_mass or self.by_ratio):
-            raise LawError(
-                f"the bolometric law {chain._bolometric.name} depends on several quantities at "
-                "once and cannot be inverted."
-            )
-
-    def _ratio_of_rate(self, rate: Array) -> Array:
-        return self._chain._accretion.eddington_ratio(rate, self._chain._disc)
-
-    def _lx_of_lbol(self, lbol: Array) -> Array:
-        unknown = np.full(lbol.shape, np.nan)
-        return self._chain.agn_light(lbol, unknown, unknown)
-
-    def _lx_of_ratio(self, ratio: Array) -> Array:
-        """L(2-10 keV) in units of the Eddington luminosity."""
-        return self._chain.agn_light(ratio, ratio, np.full(ratio.shape, np.nan))
-
-    @cached_property
-    def _rates(self) -> Curve:
-        return Curve(self._ratio_of_rate, *_RATE)
-
-    @cached_property
-    def _luminosities(self) -> Curve:
-        return Curve(self._lx_of_lbol, *_LBOL)
-
-    @cached_property
-    def _ratios(self) -> Curve:
-        return Curve(self._lx_of_ratio, *_RATIO)
-
-    @cached_property
-    def _rates_by_ratio(self) -> Curve:
-        return Curve(lambda rate: self._lx_of_ratio(self._ratio_of_rate(rate)), *_RATE)
-
-    def luminosity(self, lx: Array, mbh: Array) -> Crossing:
-        """Lowest bolometric luminosity [erg/s] that stays at or above `lx`."""
-        if self.by_mass:
-            # L_X is proportional to L_bol at a given mass
-            per_lbol = self._chain.agn_light(np.ones(lx.shape), np.full(lx.shape, np.nan), mbh)
-            lbol = lx / per_lbol * _MARGIN
-            place = np.select([lbol < _LBOL[0], lbol > _LBOL[1]], [BELOW, ABOVE], INSIDE)
-            lbol[place != INSIDE] = np.nan
-            return Crossing(lbol, place.astype(np.int8), np.zeros(lx.shape, dtype=bool))
-        if self.by_ratio:
-            eddington = mbh * EDDINGTON_PER_MSUN
-            found = self._ratios.last_crossing(lx / eddington)
-            return found._replace(x=found.x * eddington)
-        return self._luminosities.last_crossing(lx)
-
-    def rate(self, lx: Array, lbol: Array, mbh: Array) -> Crossing:
-        """Lowest inflow [L_Edd/c2] that stays at or above `lx`; `lbol` from `luminosity`."""
-        eddington = mbh * EDDINGTON_PER_MSUN
-        if self.by_ratio:
-            return self._rates_by_ratio.last_crossing(lx / eddington)
-        return self._rates.last_crossing(lbol / eddington)
-
-    def mass(self, lx: Array, ratio: float) -> Array:
-        """Lightest black hole [Msun] that stays at or above `lx` at one Eddington ratio."""
-        if not self.by_mass:
-            if self.by_ratio:
-                per_eddington = self._lx_of_ratio(np.array([ratio]))[0]
-                return np.asarray(lx / (per_eddington * EDDINGTON_PER_MSUN))
-            found = self._luminosities.last_crossing(lx)
-            return np.asarray(found.x / (ratio * EDDINGTON_PER_MSUN))
-
-        def light(mbh: Array) -> Array:
-            lbol = ratio * mbh * EDDINGTON_PER_MSUN
-            return self._chain.agn_light(lbol, np.full(mbh.shape, ratio), mbh)
-
-        return Curve(light, *_MASS).last_crossing(lx).x
-
-    def mdot(self, rate: Array, lx: Array, sources: Sources) -> Array:
-        """The rate in the catalogue's convention [Msun/yr], moved up by rounding where needed."""
-        chain = self._chain
-        mdot = rate * (sources.mbh * EDDINGTON_PER_MSUN / RATE_TO_LUMINOSITY)
-        if chain.recipe.catalogue.rate == "growth":
-            mdot *= 1.0 - chain._growth_efficiency
-        for power in range(12):
-            fed_back = sources._replace(mdot=mdot)
-            lbol, ratio, _ = chain.accretion(fed_back)
-            short = chain.agn_light(lbol, ratio, sources.mbh) < lx
-            if not short.any():
-                break
-            mdot = np.where(short, mdot * (1.0 + 2.0 ** (power - 52)), mdot)
-        return mdot
-
-
 def _with_mass(sources: Sources, mbh: ArrayLike | None) -> Sources:
     mass = np.where(sources.mbh > 0.0, sources.mbh, np.nan)
     if mbh is not None:
@@ -376,7 +248,7 @@ def reach(
             needed[:, per_lx == 0.0] = np.inf
             lx = needed.max(axis=0)
             set_by = np.where(np.isnan(lx) | (lx == 0.0), 0, 1 + np.argmax(needed, axis=0))
-            lx = lx * _MARGIN
+            lx = lx * MARGIN
             shallow = needed[:2].max(axis=0) * per_lx
             with np.errstate(invalid="ignore"):
                 saturation = np.where(per_lx == 0.0, np.nan, shallow) + extra
