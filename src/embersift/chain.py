@@ -365,8 +365,14 @@ class Chain:
         return result
 
     def run_catalogue(
-        self, rows: int, block: Callable[[slice], Sources], *, threads: int = 2, chunk: int = CHUNK
-    ) -> tuple[Sources, Screened]:
+        self,
+        rows: int,
+        block: Callable[[slice], Sources],
+        *,
+        keep_sources: bool = True,
+        threads: int = 2,
+        chunk: int = CHUNK,
+    ) -> tuple[Sources | None, Screened]:
         """`run` for a table that is turned into sources chunk by chunk, while it is in the cache.
 
         Parameters
@@ -375,8 +381,18 @@ class Chain:
             Rows of the table.
         block : callable
             Gives the sources of a slice of rows.
+        keep_sources : bool
+            Whether the sources are wanted back; writing them costs as much as half the chain.
         """
         result = self._empty(rows)
+        if not keep_sources:
+            each_chunk(
+                rows,
+                chunk,
+                threads,
+                lambda part: _store(self.run_block(block(part)), result, part),
+            )
+            return None, result
         numbers = [np.empty(rows) for _ in Sources._fields[:-1]]
         named = dict(zip(Sources._fields[:-1], numbers, strict=True))
         sources = Sources(**named, problems=result.problems)

@@ -55,8 +55,8 @@ Survival: TypeAlias = Callable[[Array, Rows], Array]
 """``survival(flux, rows)``: P(background >= flux), for the rows of the catalogue numbered `rows`;
 `flux` has shape (rows,) or (rows, nodes). It must not rise with flux, and be 1 at flux 0."""
 
-_CUT = 4.9  # standard deviations: 5e-7 of a Gaussian lies above
-_SURE = 5e-7  # a bound that is met with all but this probability is dropped
+_CUT = 4.7  # standard deviations: 1.3e-6 of a Gaussian lies above
+_SURE = 1.3e-6  # a bound that is met with all but this probability is dropped
 _BLOCK = 16384  # rows at a time
 _CHUNK = 1024  # rows of a quadrature at a time: times nodes, they stay in the cache
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(20)
@@ -149,6 +149,7 @@ class _Floor:
 
     def __init__(self, scatter: Scatter, least: Array) -> None:
         self.hard = scatter.agn == 0.0 or scatter.variability == 0.0
+        self.slope = 0.0
         if self.hard:
             # k is t, and the floor one more bound on it; or k is 0 and the caller's affair
             none = np.full(least.shape, -np.inf)
@@ -351,7 +352,9 @@ def _too_faint(
     if dark.survival is None:
         spread = _CUT * dark.sigma
         missing = _log(dark.median, limits)
-        begin, breaks = -_logit(missing + spread), []
+        begin = -_logit(missing + spread)
+        # up to here the missing background hardly moves, measured by its scatter
+        breaks = [np.full(agn.shape, min(np.log10(0.7 * dark.sigma), 0.0))]
         high = np.minimum(high, -_logit(missing - spread))
     else:
         high = np.minimum(high, -_logit(_log(dark.least, limits)))
@@ -378,8 +381,11 @@ def _too_faint(
         return at_limit - np.logaddexp(0.0, w * -_LN10) / _LN10
 
     floor_end = _logit(floor.high * sigma - at_limit)
+    # from here on t hardly moves any more, and the integrand falls as 10^-w
+    narrow = np.where(np.isinf(floor_end), sigma / max(floor.slope, 1.0), sigma)
+    settled = np.maximum(-np.log10(narrow), 0.0)
     high = np.maximum(high, begin)
-    result = _integrals(begin, high, [*breaks, floor_end, np.zeros(agn.shape)], integrand) / sigma
+    result = _integrals(begin, high, [*breaks, floor_end, settled], integrand) / sigma
     # up to `begin` every background is too faint
     certain = np.flatnonzero(begin > low)
     if certain.size:

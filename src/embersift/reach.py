@@ -247,11 +247,11 @@ def reach(
             # no light arrives: what is needed is infinite, even where nothing is asked for
             needed[:, per_lx == 0.0] = np.inf
             lx = needed.max(axis=0)
-            set_by = np.where(np.isnan(lx) | (lx == 0.0), 0, 1 + np.argmax(needed, axis=0))
+            set_by = np.where(np.isfinite(lx) & (lx > 0.0), 1 + np.argmax(needed, axis=0), 0)
             lx = lx * MARGIN
-            shallow = needed[:2].max(axis=0) * per_lx
             with np.errstate(invalid="ignore"):
-                saturation = np.where(per_lx == 0.0, np.nan, shallow) + extra
+                # NaN where no light arrives at any depth
+                saturation = needed[:2].max(axis=0) * per_lx + extra
             exposure_wanted = None
             if wanted_lx is not None:
                 with np.errstate(invalid="ignore"):

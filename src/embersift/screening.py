@@ -84,13 +84,24 @@ def screen(table: T, recipe: Recipe | None = None, *, threads: int = 2) -> T:
     >>> screen(galaxy)["fate_any_2"].tolist()
     ['visible']
     """
-    return screen_table(table, recipe or Recipe(), threads=threads).table  # type: ignore[no-any-return]
+    chosen = recipe or Recipe()
+    plan, chain = _prepared(table, chosen, "the table")
+    _, result = _run(table, plan, chain, threads=threads, keep_sources=chain.blends_hosts)
+    return attach(table, chain, result)  # type: ignore[no-any-return]
 
 
 def screen_table(
     table: Any, recipe: Recipe, *, origin: str = "the table", threads: int = 2
 ) -> Screening:
     """`screen`, keeping what a summary needs besides the table."""
+    plan, chain = _prepared(table, recipe, origin)
+    sources, result = _run(table, plan, chain, threads=threads, keep_sources=True)
+    assert sources is not None
+    return Screening(attach(table, chain, result), chain, plan, sources, result)
+
+
+def _prepared(table: Any, recipe: Recipe, origin: str) -> tuple[Layout, Chain]:
+    """The table's layout and the recipe's chain, once it is sure that they can be used."""
     from embersift.tables import units_of
 
     names = column_names(table)
@@ -101,14 +112,23 @@ def screen_table(
     if len(table) == 0:
         raise CatalogueError(f"{origin}: the table has columns and no rows; nothing to screen.")
     suspicion(plan, table)
+    return plan, chain
+
+
+def _run(
+    table: Any, plan: Layout, chain: Chain, *, threads: int, keep_sources: bool
+) -> tuple[Sources | None, Screened]:
     raw = plan.raw_columns(table)
     sources, result = chain.run_catalogue(
-        len(table), lambda part: plan.take(raw.part(part)), threads=threads
+        len(table),
+        lambda part: plan.take(raw.part(part)),
+        threads=threads,
+        keep_sources=keep_sources,
     )
     host = host_numbers(table, plan) if chain.blends_hosts else None
-    if host is not None:
+    if host is not None and sources is not None:
         chain.blend(sources, host, result)
-    return Screening(attach(table, chain, result), chain, plan, sources, result)
+    return sources, result
 
 
 def refuse_collisions(names: Sequence[str], added: Sequence[OutputColumn], origin: str) -> None:
