@@ -23,7 +23,7 @@ from embersift.laws.conversions import (
 from embersift.problems import Bits, bit
 from embersift.recipe import CatalogueChoices, Recipe
 from embersift.sky.absorption import THICK
-from embersift.sky.distance import FlatUniverse
+from embersift.sky.distance import HIGHEST_REDSHIFT, FlatUniverse
 from embersift.units import Conversion, conversion
 
 __all__ = [
@@ -213,6 +213,16 @@ class Layout:
             raise CatalogueError(f"{self.origin}: column {found.column!r}: {error}") from None
         return got._replace(values=found.convert(got.values))
 
+    def plain(self, table: Any, quantity: str) -> Array | None:
+        """A column that already is what the chain works in; None when it must be read first."""
+        found = self.columns.get(quantity)
+        if found is None or self.choices.missing or found.convert != Conversion():
+            return None
+        column = table[found.column]
+        if type(column) is np.ndarray and column.dtype == np.float64 and column.ndim == 1:
+            return column
+        return None
+
     def raw_columns(self, table: Any) -> Raw:
         """The columns of numbers, as they stand, ready to be cut into blocks cheaply."""
         needed = [c.column for c in self.columns.values() if INPUT[c.quantity].numeric]
@@ -237,14 +247,15 @@ class Layout:
         def read(
             quantity: str, *, missing: str | None = "missing", sign: str = "", suffix: str = ""
         ) -> Array | None:
+            plain = self.plain(table, quantity)
+            if plain is not None and rows:
+                low, high = plain.min(), plain.max()  # NaN when any value is missing
+                if high < np.inf and (low > 0.0 or (low == 0.0 and sign != "not positive")):
+                    return plain  # the user's own memory: nothing below writes into it
             got = self.read(table, quantity)
             if got is None:
                 return None
             values = got.values
-            if rows:
-                low, high = values.min(), values.max()  # NaN when any value is missing
-                if high < np.inf and (low > 0.0 or (low == 0.0 and sign != "not positive")):
-                    return values
             if missing:
                 mark(got.missing, quantity, missing)
             mark(got.not_a_number, quantity, "not a number" + suffix)
@@ -274,7 +285,9 @@ class Layout:
         before = problems.copy()
         mdot = needed(read("mdot", sign="negative"))
         # a rate is not needed where there is no hole to take it in
-        np.copyto(problems, before, where=no_hole)
+        new = problems ^ before
+        if new.any():
+            problems ^= new * no_hole
         mark(no_hole & (mdot > 0.0), "mdot", "positive without a black hole")
 
         z, distance = self._place(table, read, mark, rows)
@@ -342,11 +355,14 @@ class Layout:
             z = self._redshift_beside(distance, table, mark)
         if distance is None:
             assert z is not None
-            mark(z == 0.0, "redshift", "zero without a distance")
-            mark(z > 1000.0, "redshift", "above 1000")
-            with np.errstate(invalid="ignore"):
-                distance = self.universe.luminosity_distance(np.where(z > 0.0, z, np.nan))
-            return np.where(z > 1000.0, np.nan, z), distance
+            zero = z == 0.0
+            mark(zero, "redshift", "zero without a distance")
+            far = z > HIGHEST_REDSHIFT
+            mark(far, "redshift", "above 1000")
+            distance = self.universe.luminosity_distance(z)  # NaN where far
+            if zero.any():
+                distance[zero] = np.nan
+            return np.where(far, np.nan, z) if far.any() else z, distance
         from_distance = self.universe.redshift(distance)
         mark(np.isfinite(distance) & np.isnan(from_distance), "distance", "beyond redshift 1000")
         if z is None:

@@ -38,8 +38,8 @@ from embersift.verdict import judge_thresholds
 
 __all__ = ["CHUNK", "Chain", "Fluxes", "Luminosities", "Screened"]
 
-CHUNK = 32768
-"""Rows per step: below this, two threads spend their time handing over the interpreter lock."""
+CHUNK = 65536
+"""Rows per step: with fewer, two threads spend their time handing over the interpreter lock."""
 
 
 class Luminosities(NamedTuple):
@@ -205,14 +205,19 @@ class Chain:
         with np.errstate(divide="ignore", invalid="ignore"):
             rate = mdot * RATE_TO_LUMINOSITY
             rate /= eddington
-            np.putmask(rate, sources.mbh == 0.0, np.nan)
+            fed_nothing = np.isinf(rate)  # a rate, and no hole to take it in
+            if fed_nothing.any():
+                rate[fed_nothing] = np.nan
             ratio = self._accretion.eddington_ratio(rate, self._disc)
         return ratio * eddington, ratio, rate
 
     def agn_light(self, lbol: Array, ratio: Array, mbh: Array) -> Array:
         """Intrinsic L(2-10 keV) of the black hole [erg/s]."""
         with np.errstate(divide="ignore", invalid="ignore"):
-            k = self._bolometric.formula(lbol, ratio, mbh, self._bolometric_values)
+            # log and pow are several times slower on zeros and NaN, which a catalogue is full of;
+            # 1 erg/s in their place changes no k, and lx is 0 or NaN all the same
+            shining = np.fmax(lbol, 1.0)
+            k = self._bolometric.formula(shining, ratio, mbh, self._bolometric_values)
             lx = lbol / k
         return lx if self._anchor == 1.0 else lx * self._anchor
 

@@ -60,6 +60,7 @@ _SURE = 1.3e-6  # a bound that is met with all but this probability is dropped
 _BLOCK = 16384  # rows at a time
 _CHUNK = 1024  # rows of a quadrature at a time: times nodes, they stay in the cache
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(20)
+_SMOOTH = 3.0  # segments no longer than this many half-widths of the narrowest step stay whole
 _LN10 = float(np.log(10.0))
 _EXACT_VARIANCE = 1e4
 
@@ -144,6 +145,19 @@ def _density(points: Array) -> Array:
     return result
 
 
+def _step(value: Array, points: Array, centre: Array, slope: float) -> Array:
+    """`value` times cdf(slope (points - centre)), in place; points rise along a row."""
+    from scipy.special import ndtr
+
+    climbed = points[:, 0] >= centre + _CUT / slope
+    if not climbed.any():
+        value *= ndtr((points - centre[:, None]) * slope)
+    elif not climbed.all():
+        rows = np.flatnonzero(~climbed)
+        value[rows] *= ndtr((points[rows] - centre[rows, None]) * slope)
+    return value
+
+
 class _Floor:
     """P(k >= least | t), a step in t / sigma_t that is climbed between `low` and `high`."""
 
@@ -162,11 +176,7 @@ class _Floor:
             self.high = self.centre + _CUT / self.slope
 
     def times(self, value: Array, points: Array, rows: Rows) -> Array:
-        from scipy.special import ndtr
-
-        if not self.hard:
-            value *= ndtr((points - self.centre[rows, None]) * self.slope)
-        return value
+        return value if self.hard else _step(value, points, self.centre[rows], self.slope)
 
 
 def _three(scatter: Scatter, k_least: Array, t_least: Array, s_least: Array) -> Array:
@@ -183,11 +193,11 @@ def _three(scatter: Scatter, k_least: Array, t_least: Array, s_least: Array) -> 
     high = np.clip(np.maximum(floor.high, centre + wide), low, _CUT)
 
     def integrand(points: Array, rows: Rows) -> Array:
-        value: Array = ndtr((points - centre[rows, None]) * slope)
-        value *= _density(points)
-        return floor.times(value, points, rows)
+        return floor.times(_step(_density(points), points, centre[rows], slope), points, rows)
 
-    breaks = [np.minimum(floor.high, centre + wide)]
+    first_end = np.minimum(floor.high, centre + wide)
+    smooth = high <= low + _SMOOTH * _CUT / max(slope, floor.slope, 1.0)
+    breaks = [np.where(smooth, high, first_end)]
     result: Array = ndtr(-high) + _integrals(low, high, breaks, integrand)
     return result
 
@@ -339,6 +349,8 @@ def _too_faint(
     Integrated over w = log10(p / (1 - p)) with p the black hole's share of the limit: where p is
     small w moves with t, where it is near 1 with the log of the background that is missing.
     """
+    from scipy.special import ndtr
+
     sigma = scatter.flux
     floor = _Floor(scatter, k_least)
     at_limit = _log(np.full(agn.shape, limit), agn)  # t at which the black hole alone suffices
@@ -349,9 +361,9 @@ def _too_faint(
     # closer to the limit than this, too little t is left to matter
     high = np.minimum(high, np.log10(0.2 / _SURE / sigma))
     limits = np.full(agn.shape, limit)
+    missing = _log(dark.median, limits)
     if dark.survival is None:
         spread = _CUT * dark.sigma
-        missing = _log(dark.median, limits)
         begin = -_logit(missing + spread)
         # up to here the missing background hardly moves, measured by its scatter
         breaks = [np.full(agn.shape, min(np.log10(0.7 * dark.sigma), 0.0))]
@@ -368,13 +380,20 @@ def _too_faint(
     begin = np.maximum(begin, low)
 
     def integrand(w: Array, rows: Rows) -> Array:
-        odds_w = _power(w)
-        rest = 1.0 / (1.0 + odds_w)
-        t = w - np.log1p(odds_w) / _LN10 + at_limit[rows, None]
-        z = t / sigma
-        value = dark.under(limit * rest, rows)
+        parts = _power(w)  # p / (1 - p)
+        parts += 1.0
+        left = np.log10(parts)  # -log10(1 - p)
+        z = w - left
+        z += at_limit[rows, None]
+        z /= sigma
+        if dark.survival is None:
+            left += missing[rows, None]
+            left *= -1.0 / dark.sigma
+            value = ndtr(left)
+        else:
+            value = dark.under(limit / parts, rows)
         value *= _density(z)
-        value *= rest
+        value /= parts
         return floor.times(value, z, rows)
 
     def t_at(w: Array) -> Array:
@@ -385,7 +404,12 @@ def _too_faint(
     narrow = np.where(np.isinf(floor_end), sigma / max(floor.slope, 1.0), sigma)
     settled = np.maximum(-np.log10(narrow), 0.0)
     high = np.maximum(high, begin)
-    result = _integrals(begin, high, [*breaks, floor_end, settled], integrand) / sigma
+    breaks = [*breaks, floor_end, settled]
+    if dark.survival is None:
+        scale = min(sigma / max(floor.slope, 1.0), dark.sigma, 0.3)
+        smooth = high <= begin + _SMOOTH * _CUT * scale
+        breaks = [np.where(smooth, high, one) for one in breaks]
+    result = _integrals(begin, high, breaks, integrand) / sigma
     # up to `begin` every background is too faint
     certain = np.flatnonzero(begin > low)
     if certain.size:

@@ -275,29 +275,16 @@ def expected_successes(
     RecipeError
         A level outside 0 to 1, or a number of targets below 1.
     """
-    if not 0.0 < level < 1.0:
-        raise RecipeError(f"The level is {level:g}; give a number between 0 and 1.")
+    from embersift.odds import poisson_binomial_interval
+
     if any(number < 1 for number in first):
         raise RecipeError(f"{min(first)} targets cannot be counted; give 1 or more.")
     chances = np.nan_to_num(np.atleast_1d(np.asarray(odds, dtype=float)), nan=0.0)
-    numbers = sorted({min(int(number), chances.size) for number in first})
-    tail = 0.5 * (1.0 - level)
     found = []
-    known = np.ones(1)
-    done = 0
-    for number in numbers:
-        for p in chances[done:number]:
-            step = np.zeros(known.size + 1)
-            step[:-1] = known * (1.0 - p)
-            step[1:] += known * p
-            known = step
-        done = number
-        below = np.cumsum(known)
-        # summed from the top, so that a small upper tail keeps its digits
-        above = np.cumsum(known[::-1])[::-1]
-        low = int(np.searchsorted(below, tail, side="right"))
-        high = int(known.size - 1 - np.searchsorted(above[::-1], tail, side="right"))
-        found.append(Successes(number, math.fsum(chances[:number]), low, high))
+    for number in sorted({min(int(number), chances.size) for number in first}):
+        part = chances[:number]
+        low, high = poisson_binomial_interval(part, level)
+        found.append(Successes(number, math.fsum(part), low, high))
     return found
 
 

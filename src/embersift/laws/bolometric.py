@@ -67,7 +67,8 @@ def _rise(x: Array, c: Coefficients) -> Array:
 
 
 def _rise_lbol(lbol: Array, eddington_ratio: Array, mbh: Array, c: Coefficients) -> Array:
-    return _rise(log_solar(lbol, 0.0), c)  # a negative x has no such power
+    # a negative x has no such power; below 0.5 the rise is lost in rounding, and pow is slow at 0
+    return _rise(log_solar(lbol, 0.5), c)
 
 
 def _rise_eddington(lbol: Array, eddington_ratio: Array, mbh: Array, c: Coefficients) -> Array:
