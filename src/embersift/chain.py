@@ -72,7 +72,7 @@ class Screened(NamedTuple):
     luminosities: Luminosities
     fluxes: Mapping[str, Fluxes]
     fates: Mapping[str, NDArray[np.int8]]
-    stretched: NDArray[np.uint32]
+    stretched: NDArray[np.uint8]
     problems: Bits
 
 
@@ -143,8 +143,9 @@ class Chain:
             self._bolometric,
             *self._background.laws,
         )
+        assert len(self.laws) <= 8  # one bit each
         # by kind and name: accretion and bolometric laws share the name constant
-        self._bits = {(law.kind, law.name): np.uint32(1 << i) for i, law in enumerate(self.laws)}
+        self._bits = {(law.kind, law.name): np.uint8(1 << i) for i, law in enumerate(self.laws)}
         self._gas = GasSpectrum(
             (recipe.background.gas_kt[0], recipe.background.gas_kt[1]),
             recipe.background.gas_hot_share,
@@ -248,12 +249,13 @@ class Chain:
             agn *= passed
         elif view.agn_passed != 1.0:
             agn *= view.agn_passed
-        agn /= area
+        inverse = 1.0 / area
+        agn *= inverse
         background = host.point_like * (view.binaries_share * view.binaries_passed)
         background *= shift if gamma == agn_gamma else np.exp((2.0 - gamma) * u)
         if view.gas_log_share is not None:
             background += host.gas_soft * np.exp(view.gas_log_share(u))
-        background /= area
+        background *= inverse
         if view.observation.aperture is not None:
             background *= share_in_circle(sources, view.observation.aperture)
         with np.errstate(divide="ignore", invalid="ignore"):
@@ -267,9 +269,9 @@ class Chain:
 
     def stretched(
         self, sources: Sources, lbol: Array, ratio: Array, rate: Array
-    ) -> NDArray[np.uint32]:
+    ) -> NDArray[np.uint8]:
         """Which laws were used outside their calibrated ranges, as bits."""
-        marks = np.zeros(lbol.shape, dtype=np.uint32)
+        marks = np.zeros(lbol.shape, dtype=np.uint8)
         accreting = lbol > 0.0
         spans = {
             "lbol": lbol,
@@ -281,9 +283,9 @@ class Chain:
         with np.errstate(invalid="ignore"):
             for law in (self._accretion, self._bolometric):
                 mark = law.stretched(**spans) & accreting
-                marks |= mark * self._bits[law.kind, law.name]
+                marks |= mark.view(np.uint8) * self._bits[law.kind, law.name]
             for host_law, mark in self._background.stretched(sources):
-                marks |= mark * self._bits[host_law.kind, host_law.name]
+                marks |= mark.view(np.uint8) * self._bits[host_law.kind, host_law.name]
         return marks
 
     # --- whole blocks -----------------------------------------------------------------------
@@ -462,7 +464,7 @@ class Chain:
                 for o in self.recipe.observation
             },
             fates={name: np.empty(rows, dtype=np.int8) for name in self.fate_columns},
-            stretched=np.empty(rows, dtype=np.uint32),
+            stretched=np.empty(rows, dtype=np.uint8),
             problems=np.empty(rows, dtype=np.uint64),
         )
 

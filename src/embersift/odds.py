@@ -60,7 +60,7 @@ _SURE = 1.3e-6  # a bound that is met with all but this probability is dropped
 _BLOCK = 16384  # rows at a time
 _CHUNK = 1024  # rows of a quadrature at a time: times nodes, they stay in the cache
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(20)
-_SMOOTH = 3.0  # segments no longer than this many half-widths of the narrowest step stay whole
+_SMOOTH = 3.2  # segments no longer than this many half-widths of the narrowest step stay whole
 _LN10 = float(np.log(10.0))
 _EXACT_VARIANCE = 1e4
 
@@ -264,12 +264,11 @@ class _Dark:
         median = median[:, None] if flux.ndim == 2 else median
         if self.sigma == 0.0:
             return np.where(median <= flux, 1.0, 0.0)
-        with np.errstate(divide="ignore"):
+        with np.errstate(divide="ignore", invalid="ignore"):
             value = np.log10(np.maximum(flux, 0.0))
-            value -= np.log10(median)  # no background: infinite, and the share 1
+            value -= np.log10(median)
             value /= self.sigma
-        result: Array = ndtr(value)
-        return result
+        return np.where(median == 0.0, 1.0, ndtr(value))
 
     def under(self, flux: Array, rows: Rows | slice = slice(None)) -> Array:
         """P(background < flux)."""
@@ -588,7 +587,8 @@ def odds(
         known &= usable
     if blended is not None:
         known &= ~blended
-    rows = np.flatnonzero(known)
+    # no flux reaches an infinite limit, and it would only upset the arithmetic below
+    rows = np.flatnonzero(known & (flux_limit < np.inf))
     factor = threshold - 1.0 if criterion == "total" else threshold
     for at in range(0, rows.size, _BLOCK):
         some = rows[at : at + _BLOCK]

@@ -164,7 +164,7 @@ def _words(bits: NDArray[np.unsignedinteger[Any]], text: Callable[[int], str]) -
 
     if bits.size and int(bits.max()) < _FEW:
         # small patterns index a table, which is many times faster than hashing a million of them
-        patterns = np.flatnonzero(np.bincount(bits.astype(np.intp)))
+        patterns = np.flatnonzero(np.bincount(bits.astype(np.intp, copy=False)))
         place = np.zeros(_FEW, dtype=np.int16)
         place[patterns] = np.arange(patterns.size)
         codes = place[bits]

@@ -143,7 +143,7 @@ def _cautions(done: ScreenedFile) -> list[str]:
     cautions = _problem_sentences(sources)
     rows = sources.mstar.size
     for i, law in enumerate(screening.chain.laws):
-        count = int(np.count_nonzero(result.stretched & np.uint32(1 << i)))
+        count = int(np.count_nonzero(result.stretched & np.uint8(1 << i)))
         if count:
             outside = f" {law.outside.rstrip('.')}." if law.outside else ""
             cautions.append(
