@@ -177,7 +177,7 @@ def test_a_screened_table_is_not_screened_again(catalogue):
     run("screen", catalogue, "--quiet")
     message = refused("screen", catalogue.with_name("dwarfs.screened.ecsv"))
     assert "lbol" in message
-    assert "Is it a screened table?" in message
+    assert "Is it an output of embersift?" in message
 
 
 def test_a_file_that_is_not_there_is_named(tmp_path):

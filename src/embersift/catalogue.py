@@ -201,6 +201,7 @@ class Layout:
     choices: CatalogueChoices
     default_nh: float
     universe: FlatUniverse
+    targets: bool = False  # galaxies to be observed: neither a rate nor a mass is needed
 
     def read(self, table: Any, quantity: str) -> Numbers | None:
         """One quantity in canonical units, before any judgement; None when the table lacks it."""
@@ -274,16 +275,18 @@ class Layout:
 
         mstar = needed(read("mstar", sign="not positive"))
         sfr = needed(read("sfr", sign="negative"))
-        mbh = needed(read("mbh", missing=None, sign="negative"))
+        mbh = read("mbh", missing=None, sign="negative")
+        if mbh is None:
+            mbh = np.full(rows, np.nan)
         # a blank mass says that there is no hole; an impossible one leaves it open
         impossible = bit("mbh", "not a number") | bit("mbh", "not finite") | bit("mbh", "negative")
         blank_mass = np.isnan(mbh)
-        if blank_mass.any():
+        if blank_mass.any() and not self.targets:
             np.putmask(mbh, blank_mass & ((problems & impossible) == 0), 0.0)
         no_hole = mbh == 0.0
 
         before = problems.copy()
-        mdot = needed(read("mdot", sign="negative"))
+        mdot = np.full(rows, np.nan) if self.targets else needed(read("mdot", sign="negative"))
         # a rate is not needed where there is no hole to take it in
         new = problems ^ before
         if new.any():
@@ -393,7 +396,12 @@ class Layout:
 
 
 def layout(
-    names: Sequence[str], units: Mapping[str, str], recipe: Recipe, origin: str = "the table"
+    names: Sequence[str],
+    units: Mapping[str, str],
+    recipe: Recipe,
+    origin: str = "the table",
+    *,
+    targets: bool = False,
 ) -> Layout:
     """Match a table's columns with the quantities that the chain needs.
 
@@ -408,6 +416,8 @@ def layout(
         its own name.
     origin : str
         File name, for messages.
+    targets : bool
+        The rows are galaxies to be observed: they need no accretion rate and no black-hole mass.
 
     Raises
     ------
@@ -444,7 +454,7 @@ def layout(
             convert = conversion(unit, declared.unit, choices.h, where)
         chosen[quantity] = Column(quantity, column, unit, convert)
 
-    _check_needed(chosen, names, choices, origin)
+    _check_needed(chosen, names, choices, origin, ("mbh", "mdot") if targets else ())
     if "oh12" in chosen and "metallicity" in chosen:
         del chosen["metallicity"]
         cautions.append("both oh12 and metallicity are there; oh12 was used.")
@@ -467,18 +477,23 @@ def layout(
         choices=choices,
         default_nh=recipe.agn.nh,
         universe=FlatUniverse(recipe.cosmology.h0, recipe.cosmology.om0),
+        targets=targets,
     )
 
 
 def _check_needed(
-    chosen: Mapping[str, Column], names: Sequence[str], choices: CatalogueChoices, origin: str
+    chosen: Mapping[str, Column],
+    names: Sequence[str],
+    choices: CatalogueChoices,
+    origin: str,
+    spared: Sequence[str],
 ) -> None:
     missing = [
         f"{name} [{column.unit}] ({did_you_mean(name, names).rstrip('.')})"
         if did_you_mean(name, names).startswith("Did")
         else f"{name} [{column.unit}]"
         for name, column in INPUT.items()
-        if column.need == "yes" and name not in chosen
+        if column.need == "yes" and name not in chosen and name not in spared
     ]
     if not {"redshift", "distance"} & set(chosen) and choices.redshift is None:
         missing.append("redshift or distance [Mpc] (or one redshift for all: --redshift Z)")

@@ -16,10 +16,10 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from embersift.arrays import Array
+from embersift.arrays import Array, Mask
 from embersift.bands import HARD, SOFT
 from embersift.catalogue import Sources
-from embersift.columns import fate_column
+from embersift.columns import fate_column, odds_column
 from embersift.constants import EDDINGTON_PER_MSUN, MPC, RATE_TO_LUMINOSITY
 from embersift.errors import LawError
 from embersift.host import Background, HostLight
@@ -28,6 +28,8 @@ from embersift.laws import accretion_law, bolometric_law
 from embersift.laws.accretion import isco_efficiency
 from embersift.laws.conversions import inflow_from_growth
 from embersift.laws.declaration import Coefficients, Disc, Law
+from embersift.obscuration import NhTable, average_over_nh
+from embersift.odds import Scatter, odds
 from embersift.problems import UNUSABLE, Bits
 from embersift.recipe import Observation, Recipe
 from embersift.sky.absorption import power_law_transmission
@@ -72,12 +74,13 @@ class Screened(NamedTuple):
     luminosities: Luminosities
     fluxes: Mapping[str, Fluxes]
     fates: Mapping[str, NDArray[np.int8]]
+    odds: Mapping[str, Array]  # by column name; empty when they were not asked for
     stretched: NDArray[np.uint8]
     problems: Bits
 
 
 @dataclass(frozen=True)
-class _View:
+class View:
     """One observation, with everything that does not depend on the row worked out."""
 
     observation: Observation
@@ -127,20 +130,22 @@ class Chain:
     def __init__(self, recipe: Recipe) -> None:
         self.recipe = recipe
         agn = recipe.agn
-        self._accretion = accretion_law(agn.accretion)
-        self._disc = Disc(efficiency=agn.efficiency, spin=agn.spin, delta=agn.delta)
+        self.accretion_law = accretion_law(agn.accretion)
+        self.disc = Disc(efficiency=agn.efficiency, spin=agn.spin, delta=agn.delta)
         # fail before the first row when the spin or the heating share does not exist
-        self._accretion.eddington_ratio(np.array([1.0]), self._disc)
-        self._bolometric = bolometric_law(agn.bolometric)
-        self._bolometric_values = self._correction_values()
+        self.accretion_law.eddington_ratio(np.array([1.0]), self.disc)
+        self.bolometric_law = bolometric_law(agn.bolometric)
+        self.correction = self._correction_values()
         self._anchor = 1.0 if agn.anchor == "hard" else power_law_ratio(agn.gamma, HARD, SOFT)
-        self._growth_efficiency = (
+        self.growth_efficiency = (
             isco_efficiency(agn.spin) if agn.accretion == "isco" else agn.efficiency
         )
         self._background = Background(recipe)
+        self.nh_table = NhTable(agn.nh_edges, agn.nh_fractions) if agn.nh_edges else None
+        self.scatter = self._scatter()
         self.laws: tuple[Law, ...] = (
-            self._accretion,
-            self._bolometric,
+            self.accretion_law,
+            self.bolometric_law,
             *self._background.laws,
         )
         assert len(self.laws) <= 8  # one bit each
@@ -150,7 +155,7 @@ class Chain:
             (recipe.background.gas_kt[0], recipe.background.gas_kt[1]),
             recipe.background.gas_hot_share,
         )
-        self._views = tuple(self._view(o) for o in recipe.observation)
+        self.views = tuple(self._view(o) for o in recipe.observation)
 
     def _correction_values(self) -> Coefficients:
         agn = self.recipe.agn
@@ -161,13 +166,31 @@ class Chain:
                     "8 to 50 are in use for faint nuclei (embersift laws lopez2024)."
                 )
             return {"k": agn.k}
-        return self._bolometric.values if agn.anchor == "hard" else self._bolometric.soft_values
+        return (
+            self.bolometric_law.values if agn.anchor == "hard" else self.bolometric_law.soft_values
+        )
 
-    def _view(self, observation: Observation) -> _View:
+    def _scatter(self) -> Scatter:
+        """The scatters of the odds; none at all when only columns are averaged over."""
+        choices = self.recipe.odds
+        if not self.recipe.screen.odds:
+            return Scatter()
+        law = self.bolometric_law
+        agn = choices.agn_scatter
+        if agn is None:
+            agn = law.scatter_dex if self.recipe.agn.anchor == "hard" else law.soft_scatter_dex
+        if agn is None:
+            raise LawError(
+                f"{law.name} has no published scatter, which odds need. "
+                "Set odds.agn_scatter in dex; 0.3 to 0.4 is prudent in dwarfs."
+            )
+        return Scatter(agn, choices.background_scatter, choices.variability)
+
+    def _view(self, observation: Observation) -> View:
         agn, binaries = self.recipe.agn.gamma, self.recipe.background.gamma
         band, column = observation.band, observation.galactic_nh
         none = np.zeros(1)
-        return _View(
+        return View(
             observation=observation,
             agn_share=power_law_ratio(agn, band, HARD),
             binaries_share=power_law_ratio(binaries, band, HARD),
@@ -201,7 +224,7 @@ class Chain:
         """Bolometric luminosity [erg/s], Eddington ratio, and inflow in units of L_Edd/c2."""
         mdot = sources.mdot
         if self.recipe.catalogue.rate == "growth":
-            mdot = inflow_from_growth(mdot, self._growth_efficiency)
+            mdot = inflow_from_growth(mdot, self.growth_efficiency)
         eddington = sources.mbh * EDDINGTON_PER_MSUN
         with np.errstate(divide="ignore", invalid="ignore"):
             rate = mdot * RATE_TO_LUMINOSITY
@@ -209,7 +232,7 @@ class Chain:
             fed_nothing = np.isinf(rate)  # a rate, and no hole to take it in
             if fed_nothing.any():
                 rate[fed_nothing] = np.nan
-            ratio = self._accretion.eddington_ratio(rate, self._disc)
+            ratio = self.accretion_law.eddington_ratio(rate, self.disc)
         return ratio * eddington, ratio, rate
 
     def agn_light(self, lbol: Array, ratio: Array, mbh: Array) -> Array:
@@ -218,7 +241,7 @@ class Chain:
             # log and pow are several times slower on zeros and NaN, which a catalogue is full of;
             # 1 erg/s in their place changes no k, and lx is 0 or NaN all the same
             shining = np.fmax(lbol, 1.0)
-            k = self._bolometric.formula(shining, ratio, mbh, self._bolometric_values)
+            k = self.bolometric_law.formula(shining, ratio, mbh, self.correction)
             lx = lbol / k
         return lx if self._anchor == 1.0 else lx * self._anchor
 
@@ -227,7 +250,7 @@ class Chain:
         return self._background.light(sources)
 
     def fluxes(
-        self, view: _View, sources: Sources, lx_agn: Array, host: HostLight, u: Array, area: Array
+        self, view: View, sources: Sources, lx_agn: Array, host: HostLight, u: Array, area: Array
     ) -> Fluxes:
         """What one observation receives of the black hole and of its host."""
         agn_gamma, gamma = self.recipe.agn.gamma, self.recipe.background.gamma
@@ -267,6 +290,12 @@ class Chain:
             excess += 1.0
         return Fluxes(agn, background, excess)
 
+    def observe(self, view: View, sources: Sources, lx_agn: Array) -> Fluxes:
+        """What one observation would receive if the holes shone with `lx_agn`."""
+        u = np.log1p(sources.z)
+        area = 4.0 * np.pi * (sources.distance * MPC) ** 2
+        return self.fluxes(view, sources, lx_agn, self.host_light(sources), u, area)
+
     def stretched(
         self, sources: Sources, lbol: Array, ratio: Array, rate: Array
     ) -> NDArray[np.uint8]:
@@ -278,10 +307,10 @@ class Chain:
             "eddington_ratio": ratio,
             "mbh": sources.mbh,
             "mdot": rate,
-            "spin": np.asarray(self._disc.spin),
+            "spin": np.asarray(self.disc.spin),
         }
         with np.errstate(invalid="ignore"):
-            for law in (self._accretion, self._bolometric):
+            for law in (self.accretion_law, self.bolometric_law):
                 mark = law.stretched(**spans) & accreting
                 marks |= mark.view(np.uint8) * self._bits[law.kind, law.name]
             for host_law, mark in self._background.stretched(sources):
@@ -306,8 +335,9 @@ class Chain:
         area *= 4.0 * np.pi
         fluxes: dict[str, Fluxes] = {}
         fates: dict[str, NDArray[np.int8]] = {}
+        chances: dict[str, Array] = {}
         screen = self.recipe.screen
-        for view in self._views:
+        for view in self.views:
             seen = self.fluxes(view, sources, lx_agn, host, u, area)
             name = view.observation.name
             fluxes[name] = seen
@@ -324,20 +354,79 @@ class Chain:
             )
             for threshold, codes in zip(screen.thresholds, verdicts, strict=True):
                 fates[fate_column(name, threshold)] = codes
+            if self.with_odds:
+                masks = usable, has_hole & accreting
+                found = self._odds(view, sources, seen, lx_agn, host, u, area, masks)
+                chances |= {
+                    odds_column(fate_column(name, t)): one
+                    for t, one in zip(screen.thresholds, found, strict=True)
+                }
         return Screened(
             luminosities=Luminosities(
                 lbol, ratio, lx_agn, host.hmxb, host.lmxb, host.gas, host.background, excess
             ),
             fluxes=fluxes,
             fates=fates,
+            odds=chances,
             stretched=self.stretched(sources, lbol, ratio, rate),
             problems=sources.problems,
         )
 
     @property
+    def with_odds(self) -> bool:
+        """Whether odds were asked for, or are needed to average over columns."""
+        return self.recipe.screen.odds or self.nh_table is not None
+
+    def _odds(
+        self,
+        view: View,
+        sources: Sources,
+        seen: Fluxes,
+        lx_agn: Array,
+        host: HostLight,
+        u: Array,
+        area: Array,
+        masks: tuple[Mask, Mask],
+    ) -> list[Array]:
+        """Probability of being visible at each threshold, averaged over the table of columns."""
+        screen = self.recipe.screen
+        usable, active = masks
+
+        def at_thresholds(fluxes: Fluxes) -> Array:
+            return np.stack(
+                [
+                    odds(
+                        flux_agn=fluxes.agn,
+                        flux_background=fluxes.background,
+                        lx_agn=lx_agn,
+                        flux_limit=view.observation.flux_limit,
+                        floor=screen.floor,
+                        threshold=threshold,
+                        scatter=self.scatter,
+                        criterion="total" if screen.criterion == "total" else "agn",
+                        flux_of="total" if screen.flux_of == "total" else "agn",
+                        usable=usable,
+                        active=active,
+                    )
+                    for threshold in screen.thresholds
+                ]
+            )
+
+        if self.nh_table is None:
+            return list(at_thresholds(seen))
+
+        def behind(nh: float) -> Array:
+            column = sources._replace(nh=np.full(u.shape, nh))
+            return at_thresholds(self.fluxes(view, column, lx_agn, host, u, area))
+
+        # without scatter a verdict is a step in NH, which few nodes would miss
+        nodes = 16 if self.scatter.excess > 0.0 else 48
+        return list(average_over_nh(behind, self.nh_table, nodes))
+
+    @property
     def blends_hosts(self) -> bool:
         """Whether holes of one galaxy can fall into one circle, so that hosts matter."""
-        return any(view.observation.aperture is not None for view in self._views)
+        return any(view.observation.aperture is not None for view in self.views)
 
     def run(
         self,
@@ -415,13 +504,13 @@ class Chain:
 
     def blend(self, sources: Sources, host: NDArray[np.uint64], result: Screened) -> None:
         """Judge anew, in place, the holes of one galaxy that share an extraction circle."""
-        for view in self._views:
+        for view in self.views:
             if view.observation.aperture is not None:
                 self._blend(view, view.observation.aperture, sources, host, result)
 
     def _blend(
         self,
-        view: _View,
+        view: View,
         aperture: float,
         sources: Sources,
         host: NDArray[np.uint64],
@@ -454,7 +543,10 @@ class Chain:
             blended=found.fainter[rows],
         )
         for threshold, codes in zip(screen.thresholds, verdicts, strict=True):
-            result.fates[fate_column(name, threshold)][rows] = codes
+            fate = fate_column(name, threshold)
+            result.fates[fate][rows] = codes
+            if self.with_odds:
+                result.odds[odds_column(fate)][rows[found.fainter[rows]]] = 0.0
 
     def _empty(self, rows: int) -> Screened:
         return Screened(
@@ -464,6 +556,9 @@ class Chain:
                 for o in self.recipe.observation
             },
             fates={name: np.empty(rows, dtype=np.int8) for name in self.fate_columns},
+            odds={odds_column(name): np.empty(rows) for name in self.fate_columns}
+            if self.with_odds
+            else {},
             stretched=np.empty(rows, dtype=np.uint8),
             problems=np.empty(rows, dtype=np.uint64),
         )
@@ -486,6 +581,7 @@ def _arrays(screened: Screened) -> Iterator[NDArray[np.generic]]:
     for seen in screened.fluxes.values():
         yield from seen
     yield from screened.fates.values()
+    yield from screened.odds.values()
     yield screened.stretched
     yield screened.problems
 

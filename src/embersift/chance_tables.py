@@ -13,41 +13,26 @@ Nodes in y crowd where the luminosity functions end sharply.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Literal, TypeAlias
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import ndtr, ndtri, ndtri_exp
+from scipy.special import ndtr
 
 from embersift.arrays import Array
-from embersift.compound_poisson import (
-    Cumulants,
-    LuminosityDistribution,
-    cumulants,
-    kinks,
-    tail,
-    windows,
-)
 
-__all__ = ["AMOUNTS", "METALLICITIES", "TOP", "Axis", "ScoreTable", "build", "excess_nodes"]
+__all__ = ["BOTTOM", "METALLICITIES", "TOP", "Axis", "ScoreTable", "bulk", "compressed"]
 
 TOP = 1e5  # 1e43 erg/s
 BOTTOM = 1e-3  # 1e35 erg/s
-# Below the lowest node probabilities are proportional to the amount (`chance`); one node beyond
-# the largest amount keeps the end of the spline out of the range.
-SFRS = np.linspace(-3.6, 2.2, 30)
-MASSES = np.linspace(-4.4, 1.24, 25)
 METALLICITIES = (7.0, 9.2)
 _METAL_NODES = 20
 _METAL_BEND = 0.25
 
-_EXACT = 1e-9  # probabilities from the transform are good above this
 _SOFT = 0.5
-_BULK_SCORE = -2.0
-_LARGEST_SCORE = 35.0
 Scale: TypeAlias = Literal["log", "oh12"]
 Floats: TypeAlias = NDArray[np.float32]
 
@@ -112,7 +97,7 @@ def _bent(oh12: Array) -> Array:
     return np.asarray(-np.exp(-_METAL_BEND * (oh12 - METALLICITIES[0])))
 
 
-def _compressed(z: Array) -> Array:
+def compressed(z: Array) -> Array:
     return np.where(z < 0.0, -_SOFT * np.arcsinh(-z / _SOFT), z)
 
 
@@ -124,7 +109,7 @@ def _probability(score: Floats) -> Array:
     return np.asarray(ndtr(-score))
 
 
-def _bulk(log_quantile: Array, faintest: float) -> Array:
+def bulk(log_quantile: Array, faintest: float) -> Array:
     # nothing, smoothly, where nearly every galaxy has no source
     quantile = np.exp(log_quantile)
     above = np.maximum(quantile - faintest, 0.0)
@@ -165,7 +150,7 @@ class ScoreTable:
     def exceedance(self, coordinates: Sequence[Array], l38: Array) -> Array:
         """P(S >= l38) for rows whose coordinates (one array an axis) are all on the axes."""
         located = [axis.locate(x) for axis, x in zip(self.axes, coordinates, strict=True)]
-        y = l38 - self.bulk(located)
+        y = l38 - self._bulk(located)
         node = np.searchsorted(self.nodes, y, side="right") - 1
         np.clip(node, 0, self.nodes.size - 2, out=node)
         left = self.nodes[node]
@@ -178,7 +163,7 @@ class ScoreTable:
         pair = _contract(self._pairs, node, strides, weights).reshape(-1, 2)
         return _probability(pair[:, 0] + share * (pair[:, 1] - pair[:, 0]))
 
-    def bulk(self, located: Sequence[tuple[NDArray[np.intp], Array]]) -> Array:
+    def _bulk(self, located: Sequence[tuple[NDArray[np.intp], Array]]) -> Array:
         """The light [1e38 erg/s] that nearly every such galaxy has; smooth, not exact."""
         total = np.zeros(located[0][0].size)
         for chosen, coefficients in self.bulks:
@@ -187,7 +172,7 @@ class ScoreTable:
             base = sum(located[a][0] * s for a, s in zip(chosen, strides, strict=True))
             weights = [located[a][1] for a in chosen]
             flat = coefficients.ravel()
-            total += _bulk(_contract(flat, np.asarray(base), strides, weights), self.faintest)
+            total += bulk(_contract(flat, np.asarray(base), strides, weights), self.faintest)
         return total
 
 

@@ -79,6 +79,22 @@ FixedRedshift = Annotated[
 ]
 
 
+Thresholds = Annotated[
+    list[float] | None,
+    typer.Option("--threshold", "-t", help="Factor above the background (repeatable)."),
+]
+Limits = Annotated[
+    list[str] | None,
+    typer.Option(
+        "--limit",
+        "-l",
+        metavar="NAME=LO-HI:FLUX",
+        help="An observation: band in keV and flux limit in erg/s/cm2, such as "
+        "deep=0.5-2:1e-16, or a reference depth such as cdfs-7ms (repeatable).",
+    ),
+]
+
+
 def _version(wanted: bool) -> None:
     if wanted:
         from embersift import __version__
@@ -103,21 +119,12 @@ def screen(
     catalogue: CatalogueFile,
     recipe: RecipeFile = None,
     out: OutFile = None,
-    threshold: Annotated[
-        list[float] | None,
-        typer.Option("--threshold", "-t", help="Factor above the background (repeatable)."),
-    ] = None,
-    limit: Annotated[
-        list[str] | None,
-        typer.Option(
-            "--limit",
-            "-l",
-            metavar="NAME=LO-HI:FLUX",
-            help="An observation: band in keV and flux limit in erg/s/cm2, such as "
-            "deep=0.5-2:1e-16, or a reference depth such as cdfs-7ms (repeatable).",
-        ),
-    ] = None,
+    threshold: Thresholds = None,
+    limit: Limits = None,
     redshift: FixedRedshift = None,
+    odds: Annotated[
+        bool, typer.Option("--odds", help="Add the probability of being visible, given scatter.")
+    ] = False,
     settings: Settings = None,
     strict: Annotated[
         bool, typer.Option("--strict", help="Exit with 3 when a row is unusable.")
@@ -129,6 +136,8 @@ def screen(
     from embersift.running import screen_file
 
     chosen = _recipe(recipe, settings, redshift=redshift, thresholds=threshold, limits=limit)
+    if odds:
+        chosen = chosen.with_settings({"screen.odds": True})
     done = screen_file(catalogue, chosen, out=out, overwrite=overwrite)
     if not quiet:
         from embersift.summary import screening_lines
@@ -141,6 +150,98 @@ def screen(
             err=True,
         )
         raise typer.Exit(STRICT_ROWS)
+
+
+@app.command()
+@_speaks
+def reach(
+    catalogue: Annotated[Path, typer.Argument(help="Galaxies to observe; no rates are needed.")],
+    recipe: RecipeFile = None,
+    out: OutFile = None,
+    threshold: Thresholds = None,
+    limit: Limits = None,
+    redshift: FixedRedshift = None,
+    mbh: Annotated[
+        float | None, typer.Option("--mbh", metavar="MSUN", help="Mass of holes without one.")
+    ] = None,
+    eddington: Annotated[
+        str | None,
+        typer.Option("--eddington", metavar="A,B,C", help="Lightest visible hole at each ratio."),
+    ] = None,
+    exposure: Annotated[
+        float | None, typer.Option("--exposure", metavar="KS", help="Exposure of the flux limits.")
+    ] = None,
+    scaling: Annotated[
+        str | None, typer.Option("--scaling", help="How limits deepen: background or photon.")
+    ] = None,
+    wanted: Annotated[
+        float | None, typer.Option("--wanted", help="Eddington ratio whose exposure is asked for.")
+    ] = None,
+    rank: Annotated[
+        bool, typer.Option("--rank", help="Write a target list, best odds per exposure first.")
+    ] = False,
+    observation: Annotated[
+        str | None, typer.Option("--observation", help="Observation to rank for.")
+    ] = None,
+    settings: Settings = None,
+    overwrite: Overwrite = False,
+    quiet: Quiet = False,
+) -> None:
+    """How faint an accretor could still be claimed in each galaxy, and what sets the limit."""
+    from embersift.running import reach_file
+
+    chosen = _recipe(recipe, settings, redshift=redshift, thresholds=threshold, limits=limit)
+    given = {
+        "mbh": mbh,
+        "eddington": None if eddington is None else _numbers("--eddington", eddington),
+        "exposure": exposure,
+        "scaling": scaling,
+        "wanted": wanted,
+    }
+    changes = {f"proposal.{key}": value for key, value in given.items() if value is not None}
+    if changes:
+        chosen = chosen.with_settings(changes)
+    done = reach_file(
+        catalogue, chosen, ranked=rank, observation=observation, out=out, overwrite=overwrite
+    )
+    if not quiet:
+        from embersift.summary_targets import reach_lines
+
+        _print(reach_lines(done, _width()))
+
+
+@app.command("yield")
+@_speaks
+def sky_yield(
+    screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
+    area: Annotated[float | None, typer.Option("--area", metavar="DEG2", help="Area.")] = None,
+    redshifts: Annotated[
+        str | None, typer.Option("--redshifts", metavar="LOW,HIGH", help="Redshift range.")
+    ] = None,
+    box: Annotated[
+        float | None,
+        typer.Option("--box", metavar="MPC", help="Side of the catalogue's cube, comoving."),
+    ] = None,
+    out: OutFile = None,
+    settings: Settings = None,
+    overwrite: Overwrite = False,
+    quiet: Quiet = False,
+) -> None:
+    """Expected numbers of visible sources on the sky, per bin, with Poisson intervals."""
+    from embersift.running import yield_file
+
+    changes: dict[str, Any] = _settings(settings)
+    given = {
+        "area": area,
+        "redshifts": None if redshifts is None else _numbers("--redshifts", redshifts),
+        "box": box,
+    }
+    changes |= {f"survey.{key}": value for key, value in given.items() if value is not None}
+    done = yield_file(screened, changes, out=out, overwrite=overwrite)
+    if not quiet:
+        from embersift.summary_targets import yield_lines
+
+        _print(yield_lines(done, _width()))
 
 
 @app.command()
@@ -333,12 +434,7 @@ def _recipe(
     from embersift.recipe import Recipe
 
     chosen = Recipe.from_toml(path) if path else Recipe()
-    changes: dict[str, Any] = {}
-    for setting in settings or []:
-        key, equals, value = setting.partition("=")
-        if not equals:
-            raise RecipeError(f"--set {setting}: write section.key=value, such as screen.floor=0.")
-        changes[key.strip()] = _toml_value(value.strip())
+    changes = _settings(settings)
     if redshift is not None:
         changes["catalogue.redshift"] = redshift
     if thresholds:
@@ -348,6 +444,16 @@ def _recipe(
     if limits:
         chosen = chosen.with_observations([_observation(text) for text in limits])
     return chosen
+
+
+def _settings(settings: list[str] | None) -> dict[str, Any]:
+    changes: dict[str, Any] = {}
+    for setting in settings or []:
+        key, equals, value = setting.partition("=")
+        if not equals:
+            raise RecipeError(f"--set {setting}: write section.key=value, such as screen.floor=0.")
+        changes[key.strip()] = _toml_value(value.strip())
+    return changes
 
 
 def _toml_value(text: str) -> Any:

@@ -16,6 +16,7 @@ __all__ = [
     "InputColumn",
     "OutputColumn",
     "fate_column",
+    "odds_column",
     "output_columns",
 ]
 
@@ -74,6 +75,7 @@ INPUT: Mapping[str, InputColumn] = MappingProxyType(
             InputColumn("rhalf", "kpc", "no", "half-light radius of the galaxy"),
             InputColumn("nh", "cm-2", "no", "intrinsic column in front of the black hole"),
             InputColumn("weight", "", "no", "weight of the row in tallies"),
+            InputColumn("volume", "Mpc3", "no", "comoving volume that the row stands for"),
         )
     }
 )
@@ -118,6 +120,12 @@ OUTPUT: tuple[OutputColumn, ...] = (
     ),
     OutputColumn("fate_NAME_T", "", "the verdict at threshold T", "meta.code"),
     OutputColumn(
+        "odds_NAME_T",
+        "",
+        "probability of being visible at threshold T, given scatter and columns (when asked for)",
+        "stat.probability",
+    ),
+    OutputColumn(
         "stretched",
         "",
         "laws used outside the range they were calibrated on, joined by |",
@@ -130,19 +138,34 @@ OUTPUT: tuple[OutputColumn, ...] = (
 
 
 def output_columns(
-    observations: Iterable[str], thresholds: Iterable[float]
+    observations: Iterable[str], thresholds: Iterable[float], *, odds: bool = False
 ) -> tuple[OutputColumn, ...]:
     """The columns of one run in their order, NAME and T filled in."""
     thresholds = tuple(thresholds)
     by_name = {column.name: column for column in OUTPUT}
     columns = [c for c in OUTPUT if "NAME" not in c.name and c.name not in ("stretched", "problem")]
     fates: list[OutputColumn] = []
+    chances: list[OutputColumn] = []
     for observation in observations:
         for template in ("flux_agn_NAME", "flux_background_NAME", "excess_NAME"):
             columns.append(replace(by_name[template], name=template.replace("NAME", observation)))
         for threshold in thresholds:
-            fates.append(replace(by_name["fate_NAME_T"], name=fate_column(observation, threshold)))
-    return (*columns, *fates, by_name["stretched"], by_name["problem"])
+            name = fate_column(observation, threshold)
+            fates.append(replace(by_name["fate_NAME_T"], name=name))
+            if odds:
+                chances.append(replace(by_name["odds_NAME_T"], name=odds_column(name)))
+    return (*columns, *fates, *chances, by_name["stretched"], by_name["problem"])
+
+
+def odds_column(fate: str) -> str:
+    """Name of the odds that belong to a fate column.
+
+    Examples
+    --------
+    >>> odds_column("fate_deep_2.5")
+    'odds_deep_2.5'
+    """
+    return "odds" + fate.removeprefix("fate")
 
 
 def fate_column(observation: str, threshold: float) -> str:

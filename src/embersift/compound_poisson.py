@@ -22,7 +22,6 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
 from typing import NamedTuple, Protocol
 
 import numpy as np
@@ -32,6 +31,7 @@ from scipy.special import log_ndtr
 from embersift.arrays import Array
 
 __all__ = [
+    "Complex",
     "Cumulants",
     "LuminosityDistribution",
     "Part",
@@ -101,12 +101,11 @@ class Window:
             return 0.0
         return float(function.number_above(self.top, oh12))
 
-    @cached_property
-    def inverse(self) -> Array:
-        """Matrix from real and imaginary parts to P(S <= l), half of P(S = l) left out.
+    def inverse(self) -> Complex:
+        """Matrix (frequency, place): the real part of a product with it is P(S <= l).
 
-        One product does what an inverse transform, the undoing of the damping, a running sum and
-        a choice of places would do.
+        It does what an inverse transform, the undoing of the damping, a running sum and a choice
+        of places would do. Of P(S = l) at a point of the grid half is counted.
         """
         period = 2 * self.cells
         frequency = np.arange(self.cells + 1)
@@ -114,13 +113,7 @@ class Window:
         power = np.exp(np.multiply.outer(q, self.places))
         matrix = (power - 1.0) / np.expm1(q)[:, None] + 0.5 * power
         matrix *= np.where(frequency % self.cells == 0, 1.0, 2.0)[:, None] / period
-        real = np.empty((2 * frequency.size, self.places.size))
-        real[0::2], real[1::2] = matrix.real, -matrix.imag
-        return real
-
-    def cumulative(self, characteristic: Complex) -> Array:
-        """P(S <= l) at the wanted places; the last axis of the argument is frequency."""
-        return np.asarray(np.ascontiguousarray(characteristic).view(np.float64) @ self.inverse)
+        return np.asarray(matrix)
 
 
 def _on_grid(
@@ -207,7 +200,7 @@ def _window(begin: float, top: float, special: Sequence[float]) -> Window:
     first = cells * begin / top
     count = int(np.ceil(np.log10(top / begin) / dex))
     places = [np.round(np.geomspace(first, cells, count + 1)[1:])]
-    near = np.array([1, 2, 4, 8, 16, 32])
+    near = np.unique(np.round(1.15 ** np.arange(40)))  # to a quarter of the grid
     if any(abs(begin / edge - 1.0) < 1e-6 for edge in special):
         places.append(np.floor(first) + near)
     if any(abs(top / edge - 1.0) < 1e-6 for edge in special):
@@ -218,7 +211,7 @@ def _window(begin: float, top: float, special: Sequence[float]) -> Window:
 
 def _window_around(edge: float) -> Window:
     """A finer look at 3 per cent below and above a sharp edge."""
-    distance = np.unique(np.round(1.5 ** np.arange(13.0)).clip(max=128)).astype(np.int64)
+    distance = np.unique(np.round(1.25 ** np.arange(22.0)).clip(max=128)).astype(np.int64)
     centre = 32 * 128
     return Window(
         edge * 33 / 32, 33 * 128, np.concatenate([centre - distance[::-1], centre + distance])
@@ -254,21 +247,18 @@ def cumulants(function: LuminosityDistribution, oh12: float | None, tilt: Array)
     return Cumulants(value, slope, curvature)
 
 
-def tail(tilt: Array, total: Cumulants) -> tuple[Array, Array]:
-    """Saddlepoint approximation: luminosities, and ln P of a sum beyond them.
+def tail(tilt: Array, total: Cumulants) -> Array:
+    """Saddlepoint approximation to ln P of a sum beyond the luminosities ``total.slope``.
 
-    Above the mean for positive tilts (P(S > l)), below it for negative ones (P(S < l)). The
-    luminosities ascend with the tilt.
+    That is P(S > l) for positive tilts, where l is above the mean, and P(S < l) for negative
+    ones.
     """
-    with np.errstate(over="ignore", invalid="ignore"):
-        x = np.abs(tilt) * np.sqrt(total.curvature)
-        # exp(x^2/2) Phi(-x) tends to 1/(x sqrt(2 pi)); the logarithms would cancel
-        scaled = np.where(
-            x < 1e4, 0.5 * x * x + log_ndtr(-np.minimum(x, 1e4)), -np.log(x * 2.5066282746)
-        )
-        log_p = total.value - tilt * total.slope + scaled
-    good = np.isfinite(log_p) & np.isfinite(total.slope)
-    return total.slope[good], np.minimum(log_p[good], 0.0)
+    x = np.abs(tilt) * np.sqrt(total.curvature)
+    # ln of exp(x^2/2) Phi(-x); far out the two would cancel, and it is 1/(x sqrt(2 pi))
+    near = np.minimum(x, 1e4)
+    far = -np.log(2.5066282746 * np.maximum(x, 1.0))
+    scaled = np.where(x < 1e4, 0.5 * near * near + log_ndtr(-near), far)
+    return np.asarray(np.minimum(total.value - tilt * total.slope + scaled, 0.0))
 
 
 def exceedance_exact(
@@ -314,7 +304,7 @@ def exceedance_exact(
     while True:
         window = Window(l38, cells, np.array([cells]))
         exponent = sum(p.amount * window.exponent(p.function, p.oh12) for p in parts)
-        now = 1.0 - float(window.cumulative(np.exp(exponent))[0])
+        now = 1.0 - float((np.exp(exponent) @ window.inverse())[0].real)
         if abs(now - before) <= rtol * abs(now) or 2 * cells > most_cells:
             return now
         cells, before = 2 * cells, now

@@ -179,19 +179,19 @@ class Inverse:
                 np.array([value if name == quantity else np.nan]) for name, value in given.items()
             )
             with np.errstate(invalid="ignore"):
-                k = chain._bolometric.formula(lbol, ratio, mbh, chain._bolometric_values)
+                k = chain.bolometric_law.formula(lbol, ratio, mbh, chain.correction)
             return bool(np.isfinite(k[0]))
 
         self.by_mass = enough("mbh")
         self.by_ratio = not self.by_mass and enough("ratio")
         if not (self.by_mass or self.by_ratio or enough("lbol")):
             raise LawError(
-                f"the bolometric law {chain._bolometric.name} depends on several quantities at "
+                f"the bolometric law {chain.bolometric_law.name} depends on several quantities at "
                 "once and cannot be inverted."
             )
 
     def _ratio_of_rate(self, rate: Array) -> Array:
-        return self._chain._accretion.eddington_ratio(rate, self._chain._disc)
+        return self._chain.accretion_law.eddington_ratio(rate, self._chain.disc)
 
     def _lx_of_lbol(self, lbol: Array) -> Array:
         unknown = np.full(lbol.shape, np.nan)
@@ -259,7 +259,7 @@ class Inverse:
         chain = self._chain
         mdot = rate * (sources.mbh * EDDINGTON_PER_MSUN / RATE_TO_LUMINOSITY)
         if chain.recipe.catalogue.rate == "growth":
-            mdot *= 1.0 - chain._growth_efficiency
+            mdot *= 1.0 - chain.growth_efficiency
         for power in range(12):
             fed_back = sources._replace(mdot=mdot)
             lbol, ratio, _ = chain.accretion(fed_back)

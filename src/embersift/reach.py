@@ -228,7 +228,7 @@ def reach(
     u = np.log1p(sources.z)
     area = 4.0 * np.pi * (sources.distance * MPC) ** 2
     result: dict[tuple[str, float], Reach] = {}
-    for view in chain._views:
+    for view in chain.views:
         seen = chain.fluxes(view, sources, np.ones(u.shape), host, u, area)
         per_lx, glow = seen.agn, seen.background
         limit = view.observation.flux_limit

@@ -19,6 +19,7 @@ from embersift.recipe_values import (
     Accepts,
     band,
     choice,
+    flag,
     list_of,
     name_or_number,
     name_text,
@@ -36,9 +37,12 @@ __all__ = [
     "ColumnChoice",
     "CosmologyChoices",
     "Observation",
+    "OddsChoices",
+    "ProposalChoices",
     "RandomChoices",
     "Recipe",
     "ScreenChoices",
+    "SurveyChoices",
     "TallyChoices",
     "accepted_keys",
     "read_observation",
@@ -153,6 +157,16 @@ class AgnChoices:
         number(least=0.0, most=1e27),
         "intrinsic column [cm-2] of every black hole when there is no nh column",
     )
+    nh_edges: tuple[float, ...] = _key(
+        (),
+        list_of(number(least=10.0, most=27.0)),
+        "edges of bins in log10 NH [cm-2]: verdicts are averaged over these columns as odds",
+    )
+    nh_fractions: tuple[float, ...] = _key(
+        (),
+        list_of(number(least=0.0, most=1.0)),
+        "share of the black holes in each bin of nh_edges; they sum to 1",
+    )
 
 
 @dataclass(frozen=True)
@@ -242,6 +256,30 @@ class ScreenChoices:
         "(common practice, no source); 0 switches it off",
     )
     headline: float = _key(2.0, number(above=0.0), "threshold that the summary shows first")
+    odds: bool = _key(
+        False, flag(), "add the probability of being visible, given scatter (columns odds_NAME_T)"
+    )
+
+
+@dataclass(frozen=True)
+class OddsChoices:
+    """Scatter behind the odds; central values are taken as medians."""
+
+    agn_scatter: float | None = _key(
+        None,
+        optional(number(least=0.0, most=3.0)),
+        "scatter of the bolometric correction [dex] (left out: the law's own)",
+    )
+    background_scatter: float = _key(
+        0.4,
+        number(least=0.0, most=3.0),
+        "galaxy-to-galaxy scatter of the background [dex] (0.3 to 0.5 are published)",
+    )
+    variability: float = _key(
+        0.0,
+        number(least=0.0, most=3.0),
+        "scatter of the black hole's flux in time [dex] (0.2 to 0.3 in dwarfs, from memory)",
+    )
 
 
 @dataclass(frozen=True)
@@ -268,6 +306,71 @@ class TallyChoices:
 
 
 @dataclass(frozen=True)
+class ProposalChoices:
+    """What a proposal assumes: exposures, targets, counts (embersift reach)."""
+
+    exposure: float | None = _key(
+        None,
+        optional(number(above=0.0)),
+        "exposure [ks] that the flux limits belong to",
+    )
+    scaling: str = _key(
+        "background",
+        choice("background", "photon"),
+        "how limits fall with exposure: as its square root, or in proportion",
+    )
+    wanted: float | None = _key(
+        None, optional(number(above=0.0)), "Eddington ratio whose exposure is asked for"
+    )
+    mbh: float | None = _key(
+        None, optional(number(above=0.0)), "black-hole mass [Msun] where the catalogue has none"
+    )
+    eddington: tuple[float, ...] = _key(
+        (), list_of(number(above=0.0)), "Eddington ratios whose lightest visible hole is asked for"
+    )
+    distribution: str = _key(
+        "log-uniform(1e-5, 1)",
+        text(),
+        "assumed Eddington ratios: log-uniform(low, high), log-normal(median, dex) or "
+        "power-law(slope, low, high)",
+    )
+    effective_area: str | None = _key(
+        None, optional(text()), "effective area file, OGIP SPECRESP layout"
+    )
+    counts_per_flux: float | None = _key(
+        None,
+        optional(number(above=0.0)),
+        "counts per (erg/cm2), instead of an effective area",
+    )
+    background_rate: float = _key(
+        0.0, number(least=0.0), "sky and instrument background [counts/s/arcsec2]"
+    )
+    area_ratio: float = _key(
+        20.0, number(above=0.0), "area that the background is taken from, over the circle's"
+    )
+    probability: float = _key(
+        0.007,
+        number(above=0.0, below=1.0),
+        "no-source probability that counts as a detection (0.007: Luo et al. 2017)",
+    )
+
+
+@dataclass(frozen=True)
+class SurveyChoices:
+    """What a survey covers, for expected numbers on the sky (embersift yield)."""
+
+    area: float | None = _key(None, optional(number(above=0.0)), "area [deg2]")
+    redshifts: tuple[float, ...] | None = _key(
+        None, optional(list_of(number(least=0.0), length=2)), "redshift range, [low, high]"
+    )
+    box: float | None = _key(
+        None,
+        optional(number(above=0.0)),
+        "side of the cube that the catalogue fills [comoving Mpc], when it has no volume column",
+    )
+
+
+@dataclass(frozen=True)
 class RandomChoices:
     """Random draws, where a command makes any."""
 
@@ -280,7 +383,10 @@ SECTIONS: Mapping[str, type] = {
     "agn": AgnChoices,
     "background": BackgroundChoices,
     "screen": ScreenChoices,
+    "odds": OddsChoices,
     "tally": TallyChoices,
+    "proposal": ProposalChoices,
+    "survey": SurveyChoices,
     "random": RandomChoices,
 }
 
@@ -311,7 +417,10 @@ class Recipe:
     background: BackgroundChoices = field(default_factory=BackgroundChoices)
     observation: tuple[Observation, ...] = (Observation(),)
     screen: ScreenChoices = field(default_factory=ScreenChoices)
+    odds: OddsChoices = field(default_factory=OddsChoices)
     tally: TallyChoices = field(default_factory=TallyChoices)
+    proposal: ProposalChoices = field(default_factory=ProposalChoices)
+    survey: SurveyChoices = field(default_factory=SurveyChoices)
     random: RandomChoices = field(default_factory=RandomChoices)
     law: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
 
@@ -375,6 +484,10 @@ class Recipe:
                 "screen.thresholds: the same threshold stands twice (or two differ by less than "
                 "the ten digits that a column name shows)."
             )
+        if self.agn.nh_edges or self.agn.nh_fractions:
+            from embersift.obscuration import NhTable
+
+            NhTable(self.agn.nh_edges, self.agn.nh_fractions)
         edges = self.tally.edges
         if len(edges) < 2 or any(b <= a for a, b in itertools.pairwise(edges)):
             raise RecipeError("tally.edges: at least two values are needed, each above the last.")

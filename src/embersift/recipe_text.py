@@ -82,6 +82,15 @@ _EXAMPLES: Mapping[str, str] = {
     "stellar_age": "5.0",
     "aperture": "2.0",
     "depth": '"cdfs-7ms"',
+    "agn_scatter": "0.3",
+    "exposure": "50.0",
+    "wanted": "1e-3",
+    "mbh": "1e5",
+    "effective_area": '"mirror.arf"',
+    "counts_per_flux": "2e11",
+    "area": "10.0",
+    "redshifts": "[0.0, 0.1]",
+    "box": "100.0",
 }
 
 

@@ -19,6 +19,7 @@ __all__ = [
     "Accepts",
     "band",
     "choice",
+    "flag",
     "list_of",
     "name_or_number",
     "name_text",
@@ -84,6 +85,15 @@ def whole(*, least: int) -> Accepts:
         return value
 
     return Accepts(read, words)
+
+
+def flag() -> Accepts:
+    def read(key: str, value: Any) -> bool:
+        if not isinstance(value, bool):
+            raise _refuse(key, value, "true or false")
+        return value
+
+    return Accepts(read, "true or false")
 
 
 def text() -> Accepts:

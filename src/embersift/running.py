@@ -12,13 +12,12 @@ import numpy as np
 
 from embersift import __version__
 from embersift.catalogue import Layout, Sources, column_names, layout
-from embersift.columns import output_columns
 from embersift.errors import CatalogueError, OutputError
 from embersift.plausibility import suspicion
 from embersift.problems import UNUSABLE
 from embersift.recipe import Recipe
 from embersift.recipe_text import to_toml
-from embersift.screening import Screening, screen_table, tally, tally_screening
+from embersift.screening import Screening, declared_columns, screen_table, tally, tally_screening
 from embersift.tables import (
     Provenance,
     ReadOptions,
@@ -29,6 +28,7 @@ from embersift.tables import (
     write_table,
     write_text,
 )
+from embersift.targets import Reached, Targets, rank_targets, reach_table, sky_yield
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -37,12 +37,16 @@ if TYPE_CHECKING:
 
 __all__ = [
     "Checked",
+    "ReachedFile",
     "ScreenedFile",
     "TalliedFile",
+    "YieldFile",
     "check_file",
     "mock_file",
+    "reach_file",
     "screen_file",
     "tally_file",
+    "yield_file",
 ]
 
 
@@ -113,7 +117,7 @@ def screen_file(
         for q in ("id", "host_id")
         if q in screening.layout.columns
     ]
-    declared = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
+    declared = declared_columns(screening.chain)
     units = units_of(table) | {
         c.column: c.unit for c in screening.layout.columns.values() if c.unit
     }
@@ -172,6 +176,112 @@ def tally_file(
     elif out is not None:
         write_table(counts, out, provenance=None, units={}, overwrite=overwrite)
     return TalliedFile(screened, recipe, counts, out)
+
+
+@dataclass(frozen=True)
+class ReachedFile:
+    """What `reach_file` did."""
+
+    catalogue: Path
+    out: Path
+    reached: Reached
+    targets: Targets | None
+    cautions: tuple[str, ...]
+
+
+def reach_file(
+    catalogue: Path,
+    recipe: Recipe,
+    *,
+    ranked: bool = False,
+    observation: str | None = None,
+    out: Path | None = None,
+    overwrite: bool = False,
+) -> ReachedFile:
+    """Find what can be reached in each galaxy of a file, and write it.
+
+    Parameters
+    ----------
+    catalogue : Path
+        Galaxies to be observed; it is never changed.
+    recipe : Recipe
+        The chain, the observations and the section ``proposal``.
+    ranked : bool
+        Write the target list, best first, instead of the whole table.
+    observation : str, optional
+        Which observation the ranking is for.
+    out : Path, optional
+        Output; ``STEM.reach.ecsv`` or ``STEM.targets.ecsv`` beside the catalogue by default.
+    """
+    kind = "targets" if ranked else "reach"
+    target = out or catalogue.with_name(f"{_stem(catalogue)}.{kind}.ecsv")
+    check_output(target, overwrite=overwrite, protect=[catalogue])
+    table = read_table(catalogue, _options(recipe))
+    reached = reach_table(table, recipe, origin=str(catalogue))
+    targets = rank_targets(reached, observation=observation) if ranked else None
+    written = reached.table if targets is None else targets.table
+    columns = reached.layout.columns
+    ids = ["id", *(columns[q].column for q in ("id", "host_id") if q in columns)]
+    write_table(
+        written,
+        target,
+        provenance=provenance(recipe, reached.chain),
+        units=units_of(table)
+        | {c.column: c.unit for c in columns.values() if c.unit}
+        | {name: unit for name in column_names(written) if (unit := reach_unit(name))},
+        text_columns=[name for name in ids if name in column_names(written)],
+        overwrite=overwrite,
+        protect=[catalogue],
+    )
+    return ReachedFile(
+        catalogue,
+        target,
+        reached,
+        targets,
+        (*reached.layout.cautions, *id_cautions(table, reached.layout)),
+    )
+
+
+def reach_unit(column: str) -> str:
+    """Unit of a column that `reach` writes; empty for plain numbers and words."""
+    for start, unit in (
+        ("reach_lx_", "erg / s"),
+        ("reach_lbol_", "erg / s"),
+        ("reach_mdot_", "Msun / yr"),
+        ("reach_mbh_", "Msun"),
+        ("saturation_flux_", "erg / (s cm2)"),
+        ("exposure", "ks"),
+    ):
+        if column.startswith(start):
+            return unit
+    return ""
+
+
+@dataclass(frozen=True)
+class YieldFile:
+    """What `yield_file` counted: one row per observation, threshold and bin."""
+
+    screened: Path
+    recipe: Recipe
+    expected: pd.DataFrame
+    out: Path | None
+
+
+def yield_file(
+    screened: Path,
+    settings: Mapping[str, Any],
+    *,
+    out: Path | None = None,
+    overwrite: bool = False,
+) -> YieldFile:
+    """Expected numbers of visible sources on the sky, from a screened file."""
+    if out is not None:
+        check_output(out, overwrite=overwrite, protect=[screened])
+    recipe = recipe_of(screened).with_settings(settings)
+    expected = sky_yield(read_table(screened, ReadOptions()), recipe, origin=str(screened))
+    if out is not None:
+        write_table(expected, out, provenance=None, units={}, overwrite=overwrite)
+    return YieldFile(screened, recipe, expected, out)
 
 
 def recipe_of(screened: Path) -> Recipe:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, TypeVar
 
@@ -12,8 +12,9 @@ from numpy.typing import NDArray
 from embersift.arrays import Array
 from embersift.catalogue import MISSING_WORDS, Layout, Sources, column_names, layout, numbers
 from embersift.chain import Chain, Screened
-from embersift.columns import OutputColumn, output_columns
+from embersift.columns import OutputColumn, odds_column, output_columns
 from embersift.errors import CatalogueError, RecipeError, did_you_mean
+from embersift.odds import expected_visible
 from embersift.plausibility import suspicion
 from embersift.problems import problem_text
 from embersift.recipe import Recipe
@@ -107,7 +108,7 @@ def _prepared(table: Any, recipe: Recipe, origin: str) -> tuple[Layout, Chain]:
     names = column_names(table)
     plan = layout(names, units_of(table), recipe, origin)
     chain = Chain(recipe)
-    added = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
+    added = declared_columns(chain)
     refuse_collisions(names, added, origin)
     if len(table) == 0:
         raise CatalogueError(f"{origin}: the table has columns and no rows; nothing to screen.")
@@ -133,12 +134,26 @@ def _run(
 
 def refuse_collisions(names: Sequence[str], added: Sequence[OutputColumn], origin: str) -> None:
     """Stop when an input column has the name of one that would be written."""
-    both = sorted(set(names) & {column.name for column in added})
+    refuse_names(names, [column.name for column in added], origin)
+
+
+def refuse_names(names: Iterable[str], added: Iterable[str], origin: str) -> None:
+    """Stop when a column that would be added is there already."""
+    both = sorted(set(names) & set(added))
     if both:
         raise CatalogueError(
             f"{origin}: already has the column{'s' if len(both) > 1 else ''} {', '.join(both)}, "
-            "which screening writes. Is it a screened table? Screen the original, or rename them."
+            "which would be written. Is it an output of embersift? Take the original, "
+            "or rename them."
         )
+
+
+def declared_columns(chain: Chain) -> tuple[OutputColumn, ...]:
+    """The output columns of a run in their order."""
+    recipe = chain.recipe
+    return output_columns(
+        [o.name for o in recipe.observation], recipe.screen.thresholds, odds=chain.with_odds
+    )
 
 
 def result_columns(chain: Chain, result: Screened) -> dict[str, Any]:
@@ -153,6 +168,7 @@ def result_columns(chain: Chain, result: Screened) -> dict[str, Any]:
         columns[f"excess_{name}"] = seen.excess
     for name, codes in result.fates.items():
         columns[name] = pd.Categorical.from_codes(codes, categories=fates, validate=False)
+    columns |= result.odds
     columns["stretched"] = _words(result.stretched, chain.stretched_text)
     columns["problem"] = _words(result.problems, problem_text)
     return columns
@@ -182,8 +198,7 @@ def attach(table: Any, chain: Chain, result: Screened) -> Any:
     """A copy of the user's table with the output columns behind its own."""
     import pandas as pd
 
-    recipe = chain.recipe
-    declared = output_columns([o.name for o in recipe.observation], recipe.screen.thresholds)
+    declared = declared_columns(chain)
     columns = result_columns(chain, result)
     if isinstance(table, pd.DataFrame):
         ordered = {c.name: columns[c.name] for c in declared}
@@ -271,13 +286,22 @@ def tally(
 
     plan = layout(names, units_of(screened), recipe, origin)
     sources = plan.take(screened)
-    return _count(plan, sources, fates, screened, recipe, split)
+    chances = {
+        name: numbers(screened[name]).values for name in map(odds_column, fates) if name in names
+    }
+    return _count(plan, sources, fates, chances, screened, recipe, split)
 
 
 def tally_screening(done: Screening, *, split: str | None = None) -> pd.DataFrame:
     """`tally` of a screening that is still in memory."""
     return _count(
-        done.layout, done.sources, done.result.fates, done.table, done.chain.recipe, split
+        done.layout,
+        done.sources,
+        done.result.fates,
+        done.result.odds,
+        done.table,
+        done.chain.recipe,
+        split,
     )
 
 
@@ -317,11 +341,16 @@ def _check_edges_fit(recipe: Recipe, changes: Mapping[str, Any]) -> None:
 
 
 def _count(
-    plan: Layout, sources: Sources, fates: Mapping[str, Any], table: Any, recipe: Recipe,
+    plan: Layout,
+    sources: Sources,
+    fates: Mapping[str, Any],
+    chances: Mapping[str, Array],
+    table: Any,
+    recipe: Recipe,
     split: str | None,
-) -> pd.DataFrame:  # fmt: skip
+) -> pd.DataFrame:
 
-    by, values = _values_of(plan, sources, table, recipe.tally.by)
+    by, values = values_of(plan, sources, table, recipe.tally.by)
     groups = None
     if split is not None:
         if split != "central":
@@ -333,7 +362,7 @@ def _count(
         labels = (f"offset up to {limit:g} kpc", f"offset above {limit:g} kpc", "offset unknown")
         groups = (code.astype(np.int8), labels)
     host = host_numbers(table, plan)
-    counted = count(
+    tallied = count(
         values,
         fates,
         np.asarray(recipe.tally.edges),
@@ -342,7 +371,39 @@ def _count(
         host=host,
         split=groups,
     )
-    return counted.table(interval=recipe.tally.interval, level=recipe.tally.level)
+    frame = tallied.table(interval=recipe.tally.interval, level=recipe.tally.level)
+    return _with_expected(frame, values, chances, recipe, groups, sources, plan)
+
+
+def _with_expected(
+    frame: pd.DataFrame,
+    values: Array,
+    chances: Mapping[str, Array],
+    recipe: Recipe,
+    groups: tuple[NDArray[np.int8], Sequence[str]] | None,
+    sources: Sources,
+    plan: Layout,
+) -> pd.DataFrame:
+    """Add what the odds lead to expect: number visible per slot, and its spread."""
+    if not chances:
+        return frame
+    from embersift.bins import checked_edges, slots
+
+    edges = checked_edges(recipe.tally.edges)
+    size = len(edges) + 2
+    code, labels = groups if groups is not None else (np.zeros(values.size, np.int8), ("all",))
+    index = code.astype(np.intp) * size + slots(values, edges)
+    weight = sources.weight if "weight" in plan.columns else None
+    frame["expected_visible"] = np.nan
+    frame["expected_spread"] = np.nan
+    for name, chance in chances.items():
+        look = split_fate_column("fate" + name.removeprefix("odds"))
+        assert look is not None
+        found = expected_visible(chance, index, size * len(labels), weight)
+        here = (frame["observation"] == look[0]) & (frame["threshold"] == look[1])
+        frame.loc[here, "expected_visible"] = found.mean
+        frame.loc[here, "expected_spread"] = found.spread
+    return frame
 
 
 def host_numbers(table: Any, plan: Layout) -> NDArray[np.uint64] | None:
@@ -359,7 +420,7 @@ def host_numbers(table: Any, plan: Layout) -> NDArray[np.uint64] | None:
     return codes
 
 
-def _values_of(plan: Layout, sources: Sources, table: Any, by: str) -> tuple[str, Array]:
+def values_of(plan: Layout, sources: Sources, table: Any, by: str) -> tuple[str, Array]:
     """The quantity that is counted by, log10 for masses."""
     held = {
         "mstar": sources.mstar, "sfr": sources.sfr, "oh12": sources.oh12, "mbh": sources.mbh,

@@ -20,14 +20,22 @@ if TYPE_CHECKING:
 
     from embersift.running import Checked, ScreenedFile, TalliedFile
 
-__all__ = ["check_lines", "screening_lines", "tally_lines"]
+__all__ = [
+    "SCREENING_ONLY",
+    "check_lines",
+    "observation_words",
+    "problem_sentences",
+    "screening_lines",
+    "tally_lines",
+    "wrapped",
+]
 
-_SCREENING_ONLY = (
+SCREENING_ONLY = (
     "A screening estimate: for a submission use the observatory's own tools and handbooks."
 )
 
 
-def _wrapped(label: str, text: str, width: int, indent: int = 14) -> list[str]:
+def wrapped(label: str, text: str, width: int, indent: int = 14) -> list[str]:
     body = textwrap.wrap(text, max(30, width - indent), break_long_words=False) or [""]
     first = f"{label:<{indent}}{body[0]}"
     return [first, *(" " * indent + more for more in body[1:])]
@@ -45,17 +53,17 @@ def screening_lines(done: ScreenedFile, width: int) -> list[str]:
     unusable = (sources.problems & UNUSABLE) > 0
     holes = ~unusable & (sources.mbh > 0.0)
     accreting = holes & (sources.mdot > 0.0)
-    lines = _wrapped(
+    lines = wrapped(
         "Read",
         f"{done.catalogue}: {_rows(sources.mstar.size)}; {holes.sum():,} black holes, "
         f"{accreting.sum():,} accreting; {_rows(int(unusable.sum()))} unusable",
         width,
     )
-    lines += _wrapped("Columns", _column_words(screening.layout), width)
+    lines += wrapped("Columns", _column_words(screening.layout), width)
     lines += _law_lines(done, width)
     label = "Observed"
     for observation in recipe.observation:
-        lines += _wrapped(label, f"{observation.name}: {_observation_words(observation)}", width)
+        lines += wrapped(label, f"{observation.name}: {observation_words(observation)}", width)
         label = ""
     lines.append("")
     lines += _count_lines(done, recipe, width)
@@ -76,7 +84,7 @@ def _law_lines(done: ScreenedFile, width: int) -> list[str]:
     for law in done.screening.chain.laws:
         source = law.source.citation or "no published source"
         status = "" if law.status in ("V", "V-abs") else f" [{law.status}]"
-        lines += _wrapped(label, f"{law.name}: {source}{status}", width)
+        lines += wrapped(label, f"{law.name}: {source}{status}", width)
         label = ""
     return lines
 
@@ -93,6 +101,7 @@ def _count_lines(done: ScreenedFile, recipe: Recipe, width: int) -> list[str]:
         lines += tally_table(counts, name, headline, width)
         lines.append("")
         lines += where_hidden_lines(counts, name, headline, width)
+        lines += _expected_lines(counts, name, headline, width)
         others = [t for t in recipe.screen.thresholds if t != headline]
         if others:
             lines += textwrap.wrap(
@@ -100,6 +109,23 @@ def _count_lines(done: ScreenedFile, recipe: Recipe, width: int) -> list[str]:
             )
         lines.append("")
     return lines
+
+
+def _expected_lines(
+    counts: pd.DataFrame, observation: str, threshold: float, width: int
+) -> list[str]:
+    """What the odds lead to expect, in one sentence; nothing when there are none."""
+    if "expected_visible" not in counts:
+        return []
+    same = np.isclose(counts["threshold"], threshold)
+    here = counts[(counts["observation"] == observation) & same]
+    expected = float(here["expected_visible"].sum())
+    spread = float(np.sqrt((here["expected_spread"] ** 2).sum()))
+    return textwrap.wrap(
+        f"by the odds: {expected:,.1f} visible expected, +- {spread:,.1f} from row to row "
+        "(errors of the laws, shared by all rows, come on top)",
+        width,
+    )
 
 
 def _total_words(counts: pd.DataFrame, observation: str, threshold: float) -> str:
@@ -113,7 +139,7 @@ def _total_words(counts: pd.DataFrame, observation: str, threshold: float) -> st
     return f"threshold {threshold:g}: {number} visible, {share} hidden"
 
 
-def _observation_words(observation: Observation) -> str:
+def observation_words(observation: Observation) -> str:
     words = (
         f"{observation.band} observed, flux limit {observation.flux_limit:g} erg/s/cm2, "
         f"Galactic column {observation.galactic_nh:g} cm-2"
@@ -140,7 +166,7 @@ def _cautions(done: ScreenedFile) -> list[str]:
     """What the user must know before quoting a number, most important first."""
     screening = done.screening
     sources, result = screening.sources, screening.result
-    cautions = _problem_sentences(sources)
+    cautions = problem_sentences(sources)
     rows = sources.mstar.size
     for i, law in enumerate(screening.chain.laws):
         count = int(np.count_nonzero(result.stretched & np.uint8(1 << i)))
@@ -164,11 +190,11 @@ def _cautions(done: ScreenedFile) -> list[str]:
     if not np.any(sources.nh > 0.0):
         cautions.append("No intrinsic column was given: obscured black holes are not modelled.")
     cautions.append("Accretion rates are taken as they stand; real sources vary by factors of few.")
-    cautions.append(_SCREENING_ONLY)
+    cautions.append(SCREENING_ONLY)
     return cautions
 
 
-def _problem_sentences(sources: Sources) -> list[str]:
+def problem_sentences(sources: Sources) -> list[str]:
     sentences = []
     for problem, count, first in problem_counts(sources.problems):
         fate = "unusable" if problem.unusable else "noted"
@@ -189,14 +215,14 @@ def check_lines(done: Checked, width: int) -> list[str]:
             f"{_range(done, quantity)}"
         )
     absent = [q for q in INPUT if q not in plan.columns and q != "metallicity"]
-    lines += ["", *_wrapped("Not there", ", ".join(absent) or "nothing", width)]
+    lines += ["", *wrapped("Not there", ", ".join(absent) or "nothing", width)]
     unused = [
         n for n in column_names(done.table) if n not in {c.column for c in plan.columns.values()}
     ]
-    lines += _wrapped("Passed on", ", ".join(unused) or "nothing", width)
+    lines += wrapped("Passed on", ", ".join(unused) or "nothing", width)
     unusable = int(np.count_nonzero(sources.problems & UNUSABLE))
     lines += ["", f"{_rows(unusable)} unusable"]
-    for sentence in [*_problem_sentences(sources), *done.cautions]:
+    for sentence in [*problem_sentences(sources), *done.cautions]:
         lines += textwrap.wrap(f"- {sentence}", width, subsequent_indent="  ")
     if done.suspicion:
         lines += ["", *textwrap.wrap(f"This would stop a screening: {done.suspicion}", width)]
@@ -238,6 +264,7 @@ def tally_lines(done: TalliedFile, width: int) -> list[str]:
         lines += tally_table(here, observation, threshold, width)
         lines.append("")
         lines += where_hidden_lines(here, observation, threshold, width)
+        lines += _expected_lines(here, observation, threshold, width)
         lines.append("")
     if done.out is not None:
         lines.append(f"Wrote {done.out}")
