@@ -190,3 +190,56 @@ def test_a_yield_that_cannot_be_made_is_explained(galaxies, tmp_path, options, w
     out = tmp_path / "seen.csv"
     run("screen", galaxies, *DEEP, "--out", out, "--quiet")
     assert words in refused("yield", out, *options)
+
+
+def test_a_grid_of_masses_serves_galaxies_without_one(galaxies, tmp_path):
+    bare = tmp_path / "bare.csv"
+    pd.read_csv(galaxies).drop(columns=["mdot", "mbh"]).to_csv(bare, index=False)
+    out = tmp_path / "grid.csv"
+    run("reach", bare, *DEEP, "--mbh", "1e4,1e6", "--eddington", 1e-3, "--out", out, "--quiet")
+    table = pd.read_csv(out)
+    light, heavy = (table[f"reach_eddington_deep_2_mbh_{m}"] for m in ("10000", "1e+06"))
+    both = light.notna() & heavy.notna()
+    assert both.sum() > 50
+    assert (light[both] > heavy[both]).all()  # the same light is more of a lighter hole's limit
+    assert table["reach_eddington_deep_2"].isna().all()
+    assert any(name.startswith("reach_mbh_deep_2_at_") for name in table.columns)
+
+
+def test_counts_follow_an_effective_area_file(galaxies, tmp_path):
+    from astropy.io import fits
+
+    # a flat area of 100 cm2: counts are 100 cm2 times photons; one photon carries E erg
+    grid = np.linspace(0.3, 3.0, 271)
+    columns = [
+        fits.Column("ENERG_LO", "E", unit="keV", array=grid[:-1]),
+        fits.Column("ENERG_HI", "E", unit="keV", array=grid[1:]),
+        fits.Column("SPECRESP", "E", unit="cm**2", array=np.full(270, 100.0)),
+    ]
+    path = tmp_path / "flat.arf"
+    fits.BinTableHDU.from_columns(columns, name="SPECRESP").writeto(path)
+    out = tmp_path / "counts.csv"
+    run("reach", galaxies, "--limit", "deep=0.5-2:1e-14", "-t", 2, "--exposure", 20, "--set",
+        f'proposal.effective_area="{path}"', "--out", out, "--quiet")  # fmt: skip
+    table = pd.read_csv(out)
+    by_depth = table[table["reach_set_by_deep_2"] == "depth"]
+    # mean photon energy of a Gamma 1.8 power law in 0.5-2 keV, by scipy
+    from scipy.integrate import quad
+
+    energy = quad(lambda e: e**-0.8, 0.5, 2)[0] / quad(lambda e: e**-1.8, 0.5, 2)[0] * 1.602177e-9
+    expected = 1e-14 / energy * 100.0 * 20e3
+    np.testing.assert_allclose(by_depth["counts_deep_2"], expected, rtol=1e-5)
+
+
+def test_a_volume_per_row_serves_in_place_of_a_box(galaxies, tmp_path):
+    table = pd.read_csv(galaxies)
+    table.assign(volume=50.0**3).to_csv(galaxies, index=False)
+    seen, counts = tmp_path / "seen.csv", tmp_path / "yield.csv"
+    run("screen", galaxies, *DEEP, "--out", seen, "--quiet")
+    run("yield", seen, "--area", 10, "--redshifts", "0,0.1", "--out", counts, "--quiet")
+    by_row = pd.read_csv(counts)["expected"].sum()
+    boxed = tmp_path / "box.csv"
+    pd.read_csv(seen, dtype=str).drop(columns="volume").to_csv(boxed, index=False)
+    run("yield", boxed, "--area", 10, "--redshifts", "0,0.1", "--box", 50, "--out",
+        tmp_path / "two.csv", "--quiet")  # fmt: skip
+    assert by_row == pytest.approx(pd.read_csv(tmp_path / "two.csv")["expected"].sum(), rel=1e-9)

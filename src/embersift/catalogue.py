@@ -488,13 +488,16 @@ def _check_needed(
     origin: str,
     spared: Sequence[str],
 ) -> None:
-    missing = [
-        f"{name} [{column.unit}] ({did_you_mean(name, names).rstrip('.')})"
-        if did_you_mean(name, names).startswith("Did")
-        else f"{name} [{column.unit}]"
-        for name, column in INPUT.items()
-        if column.need == "yes" and name not in chosen and name not in spared
-    ]
+    taken = {column.column: quantity for quantity, column in chosen.items()}
+    missing = []
+    for name, column in INPUT.items():
+        if column.need != "yes" or name in chosen or name in spared:
+            continue
+        near = did_you_mean(name, names).rstrip(".")
+        hint = near if near.startswith("Did") else ""
+        if name in taken:
+            hint = f"the column of that name is taken as {taken[name]}"
+        missing.append(f"{name} [{column.unit}]" + (f" ({hint})" if hint else ""))
     if not {"redshift", "distance"} & set(chosen) and choices.redshift is None:
         missing.append("redshift or distance [Mpc] (or one redshift for all: --redshift Z)")
     if missing:

@@ -29,11 +29,6 @@ from embersift.compound_poisson import (
 
 __all__ = ["build"]
 
-# One node beyond the largest amounts keeps the ends of the splines out of the range. Below the
-# lowest, probabilities are as good as proportional to the amount, and `chance` takes over.
-_SFRS = np.linspace(-3.6, 2.2, 30)
-_MASSES = np.linspace(-4.4, 1.24, 25)
-
 _EXACT = 1e-9  # the transform is good for probabilities above this
 _BULK_SCORE = -2.0
 _TILTS = np.concatenate([-np.geomspace(1e4, 1e-6, 160), np.geomspace(1e-6, 30.0, 140)])
@@ -88,7 +83,7 @@ def build(
         Keys ``hmxb``, ``lmxb``, ``both``, as far as the functions are there.
     """
     functions = [function for function in (hmxb, lmxb) if function is not None]
-    sfr, mass, metal = Axis.log(_SFRS), Axis.log(_MASSES), Axis.oh12()
+    sfr, mass, metal = Axis.of("sfr"), Axis.of("mass"), Axis.of("oh12")
     metals = (metal,) if hmxb is not None and hmxb.needs_oh12 else ()
     oh12s = metal.nodes.tolist() if metals else [None]
     faintest = min(function.low for function in functions)
@@ -215,9 +210,10 @@ def _scattered(grid: Array, scores: Array, scatter_dex: float) -> tuple[Array, A
 
 def _nodes(functions: Sequence[LuminosityDistribution], begin: float) -> Array:
     """The nodes in y = l - bulk [1e38 erg/s]: negative, then logarithmic, dense around kinks."""
-    edges = [begin, *(edge for edge in (1.0, 100.0) if edge > begin), TOP]
-    nodes = [-np.geomspace(0.1, 2e4, 60)]
-    for (a, b), dex in zip(pairwise(edges), (0.04, 0.024, 0.0125)[-len(edges) + 1 :], strict=True):
+    nodes = [-np.geomspace(0.1, 2e4, 36)]
+    for (a, b), dex in zip(
+        pairwise((begin, 1.0, 100.0, 2e4, TOP)), (0.045, 0.028, 0.0145, 0.03), strict=True
+    ):
         nodes.append(np.geomspace(a, b, 1 + int(np.ceil(np.log10(b / a) / dex))))
     lowest = min(function.low for function in functions)
     # just below a sharp edge the chance falls in proportion to the distance from it

@@ -29,21 +29,40 @@ __all__ = ["BOTTOM", "METALLICITIES", "TOP", "Axis", "ScoreTable", "bulk", "comp
 TOP = 1e5  # 1e43 erg/s
 BOTTOM = 1e-3  # 1e35 erg/s
 METALLICITIES = (7.0, 9.2)
-_METAL_NODES = 20
-_METAL_BEND = 0.25
+# One node beyond the largest amounts keeps the ends of the splines out of the range. Below the
+# lowest, probabilities are as good as proportional to the amount, and `chance` takes over.
+_LOG_SFRS = (-3.6, 2.2)
+_LOG_MASSES = (-4.2, 1.43)
 
 _SOFT = 0.5
-Scale: TypeAlias = Literal["log", "oh12"]
+Scale: TypeAlias = Literal["sfr", "mass", "oh12"]
 Floats: TypeAlias = NDArray[np.float32]
+
+
+def _scaled(scale: Scale, values: Array) -> Array:
+    """What the nodes of an axis are uniform in."""
+    if scale == "oh12":
+        # the exponential cut moves fastest, counted in its own lengths, where O/H is low
+        return np.asarray(-np.exp(-0.3 * (values - METALLICITIES[0])))
+    logs = np.log10(values)
+    if scale == "sfr":
+        # denser around 1 Msun/yr: few or many bright sources, and low-mass binaries take over
+        # the far tail within a factor of two in SFR
+        away = (logs - 0.1) / 0.7
+        logs = logs + away / np.sqrt(1.0 + away * away)
+    return np.asarray(logs)
+
+
+_RANGES: dict[Scale, tuple[Array, int]] = {
+    "sfr": (np.logspace(*_LOG_SFRS, 100_001), 42),
+    "mass": (np.logspace(*_LOG_MASSES, 100_001), 27),
+    "oh12": (np.linspace(*METALLICITIES, 100_001), 22),
+}
 
 
 @dataclass(frozen=True)
 class Axis:
-    """Uniform nodes in the logarithm of an amount, or in a bent scale of O/H.
-
-    The cut-off of the luminosity function moves faster in terms of its own tail at low O/H, so
-    the nodes are denser there.
-    """
+    """Uniform nodes in a smooth function of SFR [Msun/yr], M* [1e11 Msun] or O/H."""
 
     scale: Scale
     first: float
@@ -51,27 +70,22 @@ class Axis:
     count: int
 
     @classmethod
-    def log(cls, nodes: Array) -> Axis:
-        return cls("log", float(nodes[0]), float(nodes[1] - nodes[0]), nodes.size)
-
-    @classmethod
-    def oh12(cls) -> Axis:
-        first, last = (float(_bent(np.float64(edge))) for edge in METALLICITIES)
-        return cls("oh12", first, (last - first) / (_METAL_NODES - 1), _METAL_NODES)
+    def of(cls, scale: Scale) -> Axis:
+        values, count = _RANGES[scale]
+        first, last = _scaled(scale, values[[0, -1]]).tolist()
+        return cls(scale, first, (last - first) / (count - 1), count)
 
     @property
     def nodes(self) -> Array:
-        nodes = self.first + self.step * np.arange(self.count)
-        if self.scale == "log":
-            return np.asarray(10.0**nodes)
-        return np.asarray(METALLICITIES[0] - np.log(-nodes) / _METAL_BEND)
+        values, _ = _RANGES[self.scale]
+        wanted = self.first + self.step * np.arange(self.count)
+        return np.asarray(np.interp(wanted, _scaled(self.scale, values), values))
 
     def locate(self, values: Array) -> tuple[NDArray[np.intp], Array]:
         """First of the four splines that count for each value, and their weights (4, n)."""
-        scaled = np.log10(values) if self.scale == "log" else _bent(values)
-        scaled = (scaled - self.first) / self.step
-        cell = np.clip(scaled.astype(np.intp), 0, self.count - 2)
-        t = scaled - cell
+        place = (_scaled(self.scale, values) - self.first) / self.step
+        cell = np.clip(place.astype(np.intp), 0, self.count - 2)
+        t = place - cell
         s = 1.0 - t
         weights = np.empty((4, t.size))
         weights[0] = s * s * s
@@ -87,14 +101,10 @@ class Axis:
         matrix = np.zeros((n + 2, n + 2))
         for i in range(n):
             matrix[i + 1, i : i + 3] = 1 / 6, 4 / 6, 1 / 6
-        # no knot at the second and last but one node
+        # no knot at the second and the last but one node
         matrix[0, :5] = matrix[-1, -5:] = 1, -4, 6, -4, 1
         solve = np.linalg.inv(matrix)[:, 1:-1]
         return np.moveaxis(np.tensordot(solve, values, (1, axis)), 0, axis)
-
-
-def _bent(oh12: Array) -> Array:
-    return np.asarray(-np.exp(-_METAL_BEND * (oh12 - METALLICITIES[0])))
 
 
 def compressed(z: Array) -> Array:

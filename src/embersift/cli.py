@@ -162,7 +162,8 @@ def reach(
     limit: Limits = None,
     redshift: FixedRedshift = None,
     mbh: Annotated[
-        float | None, typer.Option("--mbh", metavar="MSUN", help="Mass of holes without one.")
+        str | None,
+        typer.Option("--mbh", metavar="A,B,C", help="Mass [Msun] of holes without one, or a grid."),
     ] = None,
     eddington: Annotated[
         str | None,
@@ -192,7 +193,7 @@ def reach(
 
     chosen = _recipe(recipe, settings, redshift=redshift, thresholds=threshold, limits=limit)
     given = {
-        "mbh": mbh,
+        "mbh": None if mbh is None else _numbers("--mbh", mbh),
         "eddington": None if eddington is None else _numbers("--eddington", eddington),
         "exposure": exposure,
         "scaling": scaling,

@@ -196,7 +196,7 @@ def windows(functions: Sequence[LuminosityDistribution], top: float) -> tuple[Ar
 def _window(begin: float, top: float, special: Sequence[float]) -> Window:
     # many sources of a luminosity near the step: only in the windows of luminous galaxies
     cells = 1024 if top < 2000.0 else 2048
-    dex = 0.02 if top < 1.0 else 0.012 if top < 100.0 else 0.007
+    dex = 0.022 if top < 1.0 else 0.014 if top < 100.0 else 0.008
     first = cells * begin / top
     count = int(np.ceil(np.log10(top / begin) / dex))
     places = [np.round(np.geomspace(first, cells, count + 1)[1:])]

@@ -322,8 +322,10 @@ class ProposalChoices:
     wanted: float | None = _key(
         None, optional(number(above=0.0)), "Eddington ratio whose exposure is asked for"
     )
-    mbh: float | None = _key(
-        None, optional(number(above=0.0)), "black-hole mass [Msun] where the catalogue has none"
+    mbh: tuple[float, ...] = _key(
+        (),
+        list_of(number(above=0.0)),
+        "black-hole masses [Msun] to try where the catalogue has none; one fills the gaps",
     )
     eddington: tuple[float, ...] = _key(
         (), list_of(number(above=0.0)), "Eddington ratios whose lightest visible hole is asked for"

@@ -85,7 +85,6 @@ _EXAMPLES: Mapping[str, str] = {
     "agn_scatter": "0.3",
     "exposure": "50.0",
     "wanted": "1e-3",
-    "mbh": "1e5",
     "effective_area": '"mirror.arf"',
     "counts_per_flux": "2e11",
     "area": "10.0",

@@ -18,10 +18,12 @@ from embersift.tallying import where_hidden_lines
 if TYPE_CHECKING:
     import pandas as pd
 
+    from embersift.chain import Chain
     from embersift.running import Checked, ScreenedFile, TalliedFile
 
 __all__ = [
     "SCREENING_ONLY",
+    "aperture_cautions",
     "check_lines",
     "observation_words",
     "problem_sentences",
@@ -187,10 +189,36 @@ def _cautions(done: ScreenedFile) -> list[str]:
             f"{_rows(few)} with SFR below 0.1 Msun/yr: the background is a mean, and such a "
             "galaxy holds few bright binaries or none; single verdicts scatter."
         )
-    if not np.any(sources.nh > 0.0):
+    cautions += aperture_cautions(screening.chain, sources)
+    table = screening.chain.nh_table
+    if table is not None:
+        cautions.append("Odds are averaged over the table of columns, fates are not.")
+        if table.thick_share > 0.0:
+            cautions.append(
+                f"{100.0 * table.thick_share:.0f} % of the table of columns lies beyond 1e24 cm-2, "
+                "where photoelectric absorption alone is too dark."
+            )
+    elif not np.any(sources.nh > 0.0):
         cautions.append("No intrinsic column was given: obscured black holes are not modelled.")
     cautions.append("Accretion rates are taken as they stand; real sources vary by factors of few.")
     cautions.append(SCREENING_ONLY)
+    return cautions
+
+
+def aperture_cautions(chain: Chain, sources: Sources) -> list[str]:
+    """What an extraction circle does not know of the galaxies."""
+    circles = [o.name for o in chain.recipe.observation if o.aperture is not None]
+    if not circles:
+        return []
+    names = ", ".join(circles)
+    blind = int(np.count_nonzero(np.isnan(sources.rhalf)))
+    cautions = [
+        f"Circle of {names}: the host is an exponential disc seen face on, binaries and gas alike."
+    ]
+    if blind:
+        cautions.append(
+            f"{_rows(blind)} without rhalf: the whole galaxy's light competes in {names}."
+        )
     return cautions
 
 

@@ -9,7 +9,13 @@ import numpy as np
 
 from embersift.ranking import expected_successes
 from embersift.reach import SET_BY
-from embersift.summary import SCREENING_ONLY, observation_words, problem_sentences, wrapped
+from embersift.summary import (
+    SCREENING_ONLY,
+    aperture_cautions,
+    observation_words,
+    problem_sentences,
+    wrapped,
+)
 
 if TYPE_CHECKING:
     from embersift.arrays import Array
@@ -79,6 +85,7 @@ def reach_lines(done: ReachedFile, width: int) -> list[str]:
         *problem_sentences(reached.sources),
         "glow: the host's mean light sets the limit, and deeper exposures gain nothing; single "
         "dwarfs scatter about the mean.",
+        *aperture_cautions(reached.chain, reached.sources),
         *done.cautions,
         SCREENING_ONLY,
     ]

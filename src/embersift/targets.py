@@ -18,6 +18,7 @@ from embersift.catalogue import Layout, Sources, column_names, layout
 from embersift.chain import Chain
 from embersift.columns import fate_column
 from embersift.errors import CatalogueError, RecipeError
+from embersift.inversion import Inverse
 from embersift.obscuration import NhTable
 from embersift.plausibility import suspicion
 from embersift.ranking import (
@@ -95,13 +96,15 @@ def reach_table(table: Any, recipe: Recipe, *, origin: str = "the table") -> Rea
     found = reach(
         sources,
         chain,
-        mbh=choices.mbh,
+        mbh=assumed_mass(recipe),
         eddington=choices.eddington,
         exposure=choices.exposure,
         scaling=choices.scaling,
         wanted=choices.wanted,
     )
     columns: dict[str, Any] = dict(reach_columns(found, choices.eddington))
+    if len(choices.mbh) > 1:
+        columns |= _at_masses(chain, sources)
     columns |= _counts(chain, sources, found)
     columns["problem"] = _problems(sources)
     refuse_names(names, columns, origin)
@@ -113,6 +116,27 @@ def reach_table(table: Any, recipe: Recipe, *, origin: str = "the table") -> Rea
         reached = pd.concat([table, pd.DataFrame(columns, index=table.index)], axis=1)
         reached.attrs = dict(table.attrs)
     return Reached(reached, chain, plan, sources, found)
+
+
+def assumed_mass(recipe: Recipe) -> float | None:
+    """The one mass that fills the gaps of the catalogue; None for none or for a grid of them."""
+    masses = recipe.proposal.mbh
+    return masses[0] if len(masses) == 1 else None
+
+
+def _at_masses(chain: Chain, sources: Sources) -> dict[str, Array]:
+    """The reach at each mass of a grid, for galaxies without a black-hole mass."""
+    inverse = Inverse(chain)
+    # a galaxy whose mass is known has its answer already, and no other mass
+    unknown = sources._replace(mbh=np.where(sources.mbh > 0.0, np.nan, sources.mbh))
+    known = sources.mbh > 0.0
+    columns: dict[str, Array] = {}
+    for mass in chain.recipe.proposal.mbh:
+        for (name, threshold), one in reach(unknown, chain, mbh=mass, inverse=inverse).items():
+            ending = fate_column(name, threshold).removeprefix("fate") + f"_mbh_{mass:g}"
+            columns["reach_eddington" + ending] = np.where(known, np.nan, one.eddington)
+            columns["reach_mdot" + ending] = np.where(known, np.nan, one.mdot)
+    return columns
 
 
 def _problems(sources: Sources) -> Any:
@@ -221,9 +245,9 @@ def rank_targets(done: Reached, *, observation: str | None = None) -> Targets:
     distribution = read_distribution(choices.distribution)
     if recipe.agn.nh_edges:
         table = NhTable(recipe.agn.nh_edges, recipe.agn.nh_fractions)
-        odds = odds_over_nh(done.sources, done.chain, distribution, table, mbh=choices.mbh)[
-            name, threshold
-        ]
+        odds = odds_over_nh(
+            done.sources, done.chain, distribution, table, mbh=assumed_mass(recipe)
+        )[name, threshold]
     else:
         odds = odds_of_success(found, distribution)
     if np.isnan(odds).all():
