@@ -41,10 +41,12 @@ class _Kind:
         self.function = function
         self.amounts = np.zeros(1) if function is None else np.append(0.0, axis.nodes)
 
-    def characteristic(self, window: Window, oh12: float | None) -> Complex:
+    def characteristic(
+        self, window: Window, oh12: float | None, which: NDArray[np.intp]
+    ) -> Complex:
         if self.function is None:
-            return np.ones((1, window.cells + 1), dtype=complex)
-        exponent = np.multiply.outer(self.amounts, window.exponent(self.function, oh12))
+            return np.ones((which.size, window.cells + 1), dtype=complex)
+        exponent = np.multiply.outer(self.amounts[which], window.exponent(self.function, oh12))
         # numbers that do not count would become denormal, which makes products very slow
         return np.where(exponent.real > -90.0, np.exp(exponent), 0.0)
 
@@ -149,13 +151,13 @@ def _below(
     # a galaxy with 45 sources above the window is below its top as good as never
     masses = np.flatnonzero(low.above(window, None) < 45.0)
     inverse = window.inverse()
-    of_low = low.characteristic(window, None)[masses]
+    of_low = low.characteristic(window, None, masses)
     # all M* at once: one large product for all SFR and O/H instead of many small ones
     mixed = of_low.T[:, :, None] * inverse[:, None, :]
     real = np.stack([mixed.real, -mixed.imag], axis=1).reshape(2 * inverse.shape[0], -1)
     for k, oh12 in enumerate(oh12s):
         sfrs = np.flatnonzero(high.above(window, oh12) < 45.0)
-        of_high = np.ascontiguousarray(high.characteristic(window, oh12)[sfrs])
+        of_high = high.characteristic(window, oh12, sfrs)
         part = (of_high.view(np.float64) @ real).reshape(sfrs.size, masses.size, -1)
         cumulative[np.ix_(sfrs, [k], masses, where)] = part[:, None]
 
@@ -167,9 +169,7 @@ def _add_tails(
     below, above = _TILTS < 0.0, _TILTS > 0.0
     log_below = tail(_TILTS[below], Cumulants(*(part[..., below] for part in total)))
     log_above = tail(_TILTS[above], Cumulants(*(part[..., above] for part in total)))
-    for node in np.ndindex(*scores.shape[:-1]):
-        if not total.slope[node].any():
-            continue
+    for node in zip(*np.nonzero(total.slope.any(axis=-1)), strict=True):
         # the approximation is tied to the last probability that is known exactly
         faint = np.flatnonzero(cumulative[node] < _EXACT)
         if faint.size:

@@ -28,8 +28,9 @@ INTERRUPTED = 130
 _EXAMPLE = """Which massive black holes of a catalogue could an X-ray observer honestly call an
 AGN, which stay hidden, and why.
 
+\b
 Start with:  embersift screen galaxies.csv
-         or  embersift check galaxies.csv   (reads and reports, computes nothing)"""
+         or  embersift check galaxies.csv   (reads and reports)"""
 
 app = typer.Typer(
     name="embersift",
@@ -113,7 +114,7 @@ def _top(
     del version
 
 
-@app.command()
+@app.command(short_help="Judge every black hole: visible or hidden, and why.")
 @_speaks
 def screen(
     catalogue: CatalogueFile,
@@ -152,7 +153,7 @@ def screen(
         raise typer.Exit(STRICT_ROWS)
 
 
-@app.command()
+@app.command(short_help="How faint an accretor could still be claimed.")
 @_speaks
 def reach(
     catalogue: Annotated[Path, typer.Argument(help="Galaxies to observe; no rates are needed.")],
@@ -211,7 +212,7 @@ def reach(
         _print(reach_lines(done, _width()))
 
 
-@app.command("yield")
+@app.command("yield", short_help="Expected numbers of visible sources on the sky.")
 @_speaks
 def sky_yield(
     screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
@@ -245,7 +246,7 @@ def sky_yield(
         _print(yield_lines(done, _width()))
 
 
-@app.command()
+@app.command(short_help="Hidden fractions per bin of a screened table.")
 @_speaks
 def tally(
     screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
@@ -292,7 +293,7 @@ def tally(
         _print(tally_lines(done, _width()))
 
 
-@app.command()
+@app.command(short_help="Read a catalogue and report; compute nothing.")
 @_speaks
 def check(
     catalogue: CatalogueFile,
@@ -308,7 +309,7 @@ def check(
     _print(check_lines(done, _width()))
 
 
-@app.command()
+@app.command(short_help="Draw a figure from a screened table.")
 @_speaks
 def draw(
     screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
@@ -347,7 +348,7 @@ def draw(
     typer.echo(f"Wrote {out}")
 
 
-@app.command()
+@app.command(short_help="One self-contained page to share.")
 @_speaks
 def report(
     screened: Annotated[Path, typer.Argument(help="A table that `embersift screen` wrote.")],
@@ -366,7 +367,7 @@ def report(
     typer.echo(f"Wrote {out}")
 
 
-@app.command()
+@app.command(short_help="The published relations and how well verified.")
 @_speaks
 def laws(
     name: Annotated[str | None, typer.Argument(help="Show everything about this law.")] = None,
@@ -385,7 +386,7 @@ def laws(
         _print(overview_lines(_width()))
 
 
-@app.command()
+@app.command(short_help="Reference depths for --limit.")
 @_speaks
 def depths() -> None:
     """Reference depths for --limit: survey, band, flux limit, area, paper, status."""
@@ -394,7 +395,7 @@ def depths() -> None:
     _print(list(lines()))
 
 
-@app.command()
+@app.command(short_help="A commented starter recipe.")
 @_speaks
 def recipe(out: OutFile = None, overwrite: Overwrite = False) -> None:
     """Print a commented starter recipe, or write it with --out."""
@@ -409,7 +410,7 @@ def recipe(out: OutFile = None, overwrite: Overwrite = False) -> None:
     typer.echo(f"Wrote {out}")
 
 
-@app.command()
+@app.command(short_help="An invented population, for demos and benchmarks.")
 @_speaks
 def mock(
     out: Annotated[Path, typer.Option("--out", "-o", help="Output; format by its ending.")],

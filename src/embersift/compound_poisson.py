@@ -195,12 +195,12 @@ def windows(functions: Sequence[LuminosityDistribution], top: float) -> tuple[Ar
 
 def _window(begin: float, top: float, special: Sequence[float]) -> Window:
     # many sources of a luminosity near the step: only in the windows of luminous galaxies
-    cells = 1024 if top < 2000.0 else 2048
+    cells = 512 if top < 100.0 else 1024 if top < 2000.0 else 2048
     dex = 0.022 if top < 1.0 else 0.014 if top < 100.0 else 0.008
     first = cells * begin / top
     count = int(np.ceil(np.log10(top / begin) / dex))
     places = [np.round(np.geomspace(first, cells, count + 1)[1:])]
-    near = np.unique(np.round(1.15 ** np.arange(40)))  # to a quarter of the grid
+    near = np.unique(np.round(1.15 ** np.arange(1 + np.log(cells / 4.0) / np.log(1.15))))
     if any(abs(begin / edge - 1.0) < 1e-6 for edge in special):
         places.append(np.floor(first) + near)
     if any(abs(top / edge - 1.0) < 1e-6 for edge in special):

@@ -235,18 +235,17 @@ def coefficient_draws(law: Law, n: int, seed: int, *, band: str = "hard") -> lis
 
     if n < 1:
         raise RecipeError(f"draws = {n}: at least one draw is needed; 100 or more tell a spread.")
-    columns: dict[str, Any] = {}
+    sets: list[dict[str, float]] = [{} for _ in range(n)]
     drawn = set(drawn_coefficients(law, band=band))
     for name, one in _coefficients(law, band).items():
-        if name not in drawn:
-            columns[name] = [one.value] * n
-            continue
-        u = uniform(np.arange(n), seed, stream_of(law.kind, law.name, band, name))
-        if name in _POSITIVE and one.value > 0.0 and one.minus > 0.0:
-            least = float(ndtr(-one.value / one.minus))
-            u = least + (1.0 - least) * u
-        z = ndtri(u)
-        columns[name] = (one.value + z * np.where(z > 0.0, one.plus, one.minus)).tolist()
-    return [dict(zip(columns, values, strict=True)) for values in zip(*columns.values())] or [
-        {} for _ in range(n)
-    ]
+        values = [one.value] * n
+        if name in drawn:
+            u = uniform(np.arange(n), seed, stream_of(law.kind, law.name, band, name))
+            if name in _POSITIVE and one.value > 0.0 and one.minus > 0.0:
+                least = float(ndtr(-one.value / one.minus))
+                u = least + (1.0 - least) * u
+            z = ndtri(u)
+            values = (one.value + z * np.where(z > 0.0, one.plus, one.minus)).tolist()
+        for chosen, value in zip(sets, values, strict=True):
+            chosen[name] = value
+    return sets

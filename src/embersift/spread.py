@@ -25,7 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from embersift.arrays import Array, Mask
-from embersift.bins import checked_edges, slot_limits, slot_names, slots
+from embersift.bins import checked_edges, slots
 from embersift.catalogue import Sources, column_names, layout
 from embersift.chain import Chain, View, circle_radius
 from embersift.constants import MPC
@@ -79,7 +79,8 @@ ALL = "all"
 
 PERCENTILES = (16.0, 50.0, 84.0)
 
-_CHUNK = 1 << 15
+CHUNK = 1 << 15
+"""Accreting rows per step."""
 _CARRIER = "lehmer2010"  # any law of binaries: a gas law is evaluated beside one
 _LEAST = np.nextafter(0.0, 1.0)
 
@@ -264,7 +265,7 @@ class _Rows:
 
 
 def _taken(sources: Sources, rows: NDArray[np.intp]) -> Sources:
-    return Sources(*(values[rows] for values in sources))
+    return Sources._make(values[rows] for values in sources)
 
 
 class _Screen:
@@ -561,7 +562,8 @@ class SpreadResult:
             frame["draws"] = self.draws
             frame["interval"], frame["level"] = tally["interval"], tally["level"]
             frames.append(frame)
-        return pd.concat(frames, ignore_index=True)
+        whole: pd.DataFrame = pd.concat(frames, ignore_index=True)
+        return whole
 
     def table(self) -> pd.DataFrame:
         """One row per combination, observation, threshold and bin.
@@ -683,7 +685,7 @@ class SpreadResult:
                         )
 
             def most(kind: str, changes: Any = changes) -> float:
-                return max(abs(one["change"]) for one in changes[kind])
+                return max(abs(float(one["change"])) for one in changes[kind])
 
             for rank, kind in enumerate(sorted(changes, key=most, reverse=True), start=1):
                 for one in sorted(changes[kind], key=lambda row: -abs(row["change"])):
@@ -777,7 +779,7 @@ def spread_of_sources(
     seed: int | None = None,
     progress: Callable[[int, int], None] | None = None,
     threads: int = 2,
-    chunk: int = _CHUNK,
+    chunk: int | None = None,
 ) -> SpreadResult:
     """`spread` of arrays.
 
@@ -815,7 +817,7 @@ def spread_of_sources(
     accreting = holes[sources.mdot[holes] > 0.0]
     accreting = accreting[np.argsort(slot[accreting], kind="stable")]
     blending = screen.reference.blends_hosts and host is not None
-    size = max(accreting.size, 1) if blending else chunk
+    size = max(accreting.size, 1) if blending else chunk or CHUNK
     starts = range(0, accreting.size, size)
     steps = len(screen.index) + len(starts) * draws
     done = 0
@@ -925,7 +927,7 @@ def _fractions(
     holes = np.concatenate([holes, holes.sum(axis=-1, keepdims=True)], axis=-1)[:, :, :, None]
     seen = np.concatenate([visible, visible.sum(axis=-1, keepdims=True)], axis=-1)
     hidden = np.maximum(holes - seen, 0.0)  # sums of weights may differ in their last digit
-    shares = np.divide(hidden, holes, out=np.full(seen.shape, np.nan), where=holes > 0.0)
+    shares: Array = np.divide(hidden, holes, out=np.full(seen.shape, np.nan), where=holes > 0.0)
     shares = shares.reshape(*shares.shape[:2], -1, shares.shape[-1])
     for at, varies in enumerate(screen.varies):
         if not varies:

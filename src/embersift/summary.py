@@ -235,13 +235,15 @@ def check_lines(done: Checked, width: int) -> list[str]:
     """The report of `embersift check`."""
     plan, sources = done.layout, done.sources
     lines = [f"{done.catalogue}: {_rows(sources.mstar.size)}", ""]
-    lines.append(f"  {'quantity':<12}{'column':<20}{'unit':<22}range after conversion")
+    rows = [("quantity", "column", "unit", "range after conversion")]
     for quantity, column in plan.columns.items():
         unit = column.unit or INPUT[quantity].unit or "-"
-        lines.append(
-            f"  {quantity:<12}{_short(column.column, 19):<20}{_short(unit, 21):<22}"
-            f"{_range(done, quantity)}"
-        )
+        shown = (_short(column.column, 19), _short(unit, 21))
+        rows.append((quantity, *shown, _range(done, quantity)))
+    widths = [max(len(row[i]) for row in rows) for i in range(3)]
+    for row in rows:
+        words = (f"{word:<{room}}" for word, room in zip(row, widths, strict=False))
+        lines.append("  " + "  ".join([*words, row[3]]))
     absent = [q for q in INPUT if q not in plan.columns and q != "metallicity"]
     lines += ["", *wrapped("Not there", ", ".join(absent) or "nothing", width)]
     unused = [
@@ -285,6 +287,8 @@ def tally_lines(done: TalliedFile, width: int) -> list[str]:
             & (counts["threshold"] == limit)
             & (counts["split"] == group)
         ]
+        if not here["rows"].any():
+            continue  # such as holes without an offset, where every hole has one
         title = f"{observation}: hidden at threshold {threshold:g}"
         if group and group != "all":
             title += f", {group}"
