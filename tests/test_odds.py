@@ -10,10 +10,12 @@ from embersift.errors import RecipeError
 from embersift.exact_sums import as_floats
 from embersift.odds import (
     ACCURACY,
-    EXACT_ROWS,
     Scatter,
-    expected_visible,
     odds,
+)
+from embersift.poisson_binomial import (
+    EXACT_ROWS,
+    expected_visible,
     poisson_binomial,
     poisson_binomial_interval,
 )

@@ -89,7 +89,7 @@ def _tally_table() -> list[str]:
 def recipe_page() -> str:
     return (
         "# The recipe\n\n"
-        + _MADE.format(home="recipe.py")
+        + _MADE.format(home="recipe_sections.py")
         + "\n\nA recipe is a TOML file; every key has a default, and an unknown key is an error"
         "\nthat names the nearest known one. `--set section.key=value` changes it for one run.\n\n"
         + key_table()

@@ -275,7 +275,7 @@ def expected_successes(
     RecipeError
         A level outside 0 to 1, or a number of targets below 1.
     """
-    from embersift.odds import poisson_binomial_interval
+    from embersift.poisson_binomial import poisson_binomial_interval
 
     if any(number < 1 for number in first):
         raise RecipeError(f"{min(first)} targets cannot be counted; give 1 or more.")

@@ -14,8 +14,8 @@ from embersift.catalogue import MISSING_WORDS, Layout, Sources, column_names, la
 from embersift.chain import Chain, Screened
 from embersift.columns import OutputColumn, odds_column, output_columns
 from embersift.errors import CatalogueError, RecipeError, did_you_mean
-from embersift.odds import expected_visible
 from embersift.plausibility import suspicion
+from embersift.poisson_binomial import expected_visible
 from embersift.problems import problem_text
 from embersift.recipe import Recipe
 from embersift.tallying import count, split_fate_column
