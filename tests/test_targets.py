@@ -243,3 +243,30 @@ def test_a_volume_per_row_serves_in_place_of_a_box(galaxies, tmp_path):
     run("yield", boxed, "--area", 10, "--redshifts", "0,0.1", "--box", 50, "--out",
         tmp_path / "two.csv", "--quiet")  # fmt: skip
     assert by_row == pytest.approx(pd.read_csv(tmp_path / "two.csv")["expected"].sum(), rel=1e-9)
+
+
+def test_spread_writes_a_tidy_table_whose_own_laws_agree_with_the_tally(galaxies, tmp_path):
+    out, seen, counts = tmp_path / "spread.csv", tmp_path / "seen.csv", tmp_path / "counts.csv"
+    few = ("--set", 'spread.accretion=["two-regime","constant"]', "--set", 'spread.gas=["none"]')
+    few += ("--set", 'spread.bolometric=["duras2020"]', "--set", "background.gas=none")
+    result = run("spread", galaxies, *DEEP, *few, "--draws", 5, "--out", out)
+    assert "what moves the hidden share most" in result.output
+    table = pd.read_csv(out)
+    run("screen", galaxies, *DEEP, "--set", "background.gas=none", "--out", seen, "--quiet")
+    run("tally", seen, "--out", counts, "--quiet")
+    own = table[table["own"] & (table["bin"] != "all")].set_index("bin")["hidden_fraction"]
+    tally = pd.read_csv(counts).set_index("bin")["hidden_fraction"]
+    common = own.dropna().index
+    assert len(common) > 3
+    np.testing.assert_array_equal(own[common], tally[common])
+
+
+def test_no_draws_are_no_spread(galaxies):
+    assert "at least 1" in refused("spread", galaxies, *DEEP, "--draws", 0)
+    assert "Did you mean" in refused("spread", galaxies, "--set", 'spread.gas=["mineo2012gass"]')
+
+
+def test_a_kind_of_binaries_may_be_left_out(galaxies, tmp_path):
+    out = tmp_path / "none.csv"
+    run("screen", galaxies, "--set", "background.lmxb=none", "--out", out, "--quiet")
+    assert (pd.read_csv(out)["lx_lmxb"].dropna() == 0.0).all()

@@ -246,6 +246,63 @@ def sky_yield(
         _print(yield_lines(done, _width()))
 
 
+@app.command(short_help="How far laws and their errors move the hidden fraction.")
+@_speaks
+def spread(
+    catalogue: CatalogueFile,
+    recipe: RecipeFile = None,
+    out: OutFile = None,
+    threshold: Thresholds = None,
+    limit: Limits = None,
+    redshift: FixedRedshift = None,
+    draws: Annotated[int | None, typer.Option("--draws", help="Draws of the coefficients.")] = None,
+    seed: Annotated[int | None, typer.Option("--seed", help="Seed of the draws.")] = None,
+    settings: Settings = None,
+    overwrite: Overwrite = False,
+    quiet: Quiet = False,
+) -> None:
+    """Screen with every combination of laws and with coefficients drawn from their errors."""
+    from embersift.running import spread_file
+    from embersift.summary_targets import spread_lines
+
+    chosen = _recipe(recipe, settings, redshift=redshift, thresholds=threshold, limits=limit)
+    given = {"spread.draws": draws, "random.seed": seed}
+    changes = {key: value for key, value in given.items() if value is not None}
+    if changes:
+        chosen = chosen.with_settings(changes)
+    if quiet or not sys.stderr.isatty():
+        done = spread_file(catalogue, chosen, out=out, overwrite=overwrite)
+    else:
+        from rich.console import Console
+        from rich.progress import (
+            BarColumn,
+            MofNCompleteColumn,
+            Progress,
+            TaskProgressColumn,
+            TextColumn,
+            TimeRemainingColumn,
+        )
+
+        shown = (
+            TextColumn("steps"),
+            BarColumn(),
+            MofNCompleteColumn(),
+            TaskProgressColumn(show_speed=True),
+            TimeRemainingColumn(),
+        )
+        with Progress(*shown, console=Console(stderr=True), transient=True) as bar:
+            task = bar.add_task("steps", total=None)
+            done = spread_file(
+                catalogue,
+                chosen,
+                out=out,
+                overwrite=overwrite,
+                progress=lambda at, steps: bar.update(task, completed=at, total=steps),
+            )
+    if not quiet:
+        _print(spread_lines(done, _width()))
+
+
 @app.command(short_help="Hidden fractions per bin of a screened table.")
 @_speaks
 def tally(

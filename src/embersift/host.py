@@ -220,7 +220,8 @@ class Background:
             gas_soft = np.where(np.isfinite(sources.mstar) & np.isfinite(sources.sfr), 0.0, np.nan)
         if whole is None:
             gas = gas_soft * self._spectrum.ratio(HARD, SOFT)
-            hmxb, lmxb = parts["hmxb"], parts["lmxb"]
+            dark = np.zeros_like(gas_soft) if len(parts) < 3 else gas_soft
+            hmxb, lmxb = parts.get("hmxb", dark), parts.get("lmxb", dark)
             point_like = hmxb + lmxb
             return HostLight(hmxb, lmxb, gas, point_like + gas, point_like, gas_soft)
         unknown = np.full(whole.shape, np.nan)

@@ -25,6 +25,7 @@ from embersift.recipe_sections import (
     ProposalChoices,
     RandomChoices,
     ScreenChoices,
+    SpreadChoices,
     SurveyChoices,
     TallyChoices,
 )
@@ -43,6 +44,7 @@ __all__ = [
     "RandomChoices",
     "Recipe",
     "ScreenChoices",
+    "SpreadChoices",
     "SurveyChoices",
     "TallyChoices",
     "accepted_keys",
@@ -80,6 +82,7 @@ class Recipe:
     tally: TallyChoices = field(default_factory=TallyChoices)
     proposal: ProposalChoices = field(default_factory=ProposalChoices)
     survey: SurveyChoices = field(default_factory=SurveyChoices)
+    spread: SpreadChoices = field(default_factory=SpreadChoices)
     random: RandomChoices = field(default_factory=RandomChoices)
     law: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
 

@@ -36,6 +36,7 @@ __all__ = [
     "ProposalChoices",
     "RandomChoices",
     "ScreenChoices",
+    "SpreadChoices",
     "SurveyChoices",
     "TallyChoices",
 ]
@@ -365,6 +366,25 @@ class SurveyChoices:
 
 
 @dataclass(frozen=True)
+class SpreadChoices:
+    """Laws that `embersift spread` combines; a list left out is the default set."""
+
+    accretion: tuple[str, ...] | None = _key(
+        None, optional(list_of(text())), "accretion laws to combine"
+    )
+    bolometric: tuple[str, ...] | None = _key(
+        None, optional(list_of(text())), "bolometric corrections to combine"
+    )
+    binaries: tuple[str, ...] | None = _key(
+        None,
+        optional(list_of(text())),
+        'laws of the binaries to combine, each "LAW" or "HMXB+LMXB"',
+    )
+    gas: tuple[str, ...] | None = _key(None, optional(list_of(text())), "gas laws to combine")
+    draws: int = _key(200, whole(least=1), "draws of the coefficients from their published errors")
+
+
+@dataclass(frozen=True)
 class RandomChoices:
     """Random draws, where a command makes any."""
 
@@ -381,5 +401,6 @@ SECTIONS: Mapping[str, type] = {
     "tally": TallyChoices,
     "proposal": ProposalChoices,
     "survey": SurveyChoices,
+    "spread": SpreadChoices,
     "random": RandomChoices,
 }

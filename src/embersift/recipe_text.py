@@ -11,6 +11,7 @@ from embersift.recipe import (
     SECTIONS,
     Observation,
     Recipe,
+    SpreadChoices,
     accepted_keys,
 )
 
@@ -83,6 +84,9 @@ _EXAMPLES: Mapping[str, str] = {
     "aperture": "2.0",
     "depth": '"cdfs-7ms"',
     "agn_scatter": "0.3",
+    "accretion": '["two-regime", "constant"]',
+    "bolometric": '["duras2020", "lopez2024"]',
+    "gas": '["mineo2012gas", "none"]',
     "exposure": "50.0",
     "wanted": "1e-3",
     "effective_area": '"mirror.arf"',
@@ -138,13 +142,20 @@ def starter() -> str:
     return "\n".join(lines) + "\n"
 
 
+def _example(kind: type, name: str) -> str:
+    # binaries is one law in a background and a list of them in a spread
+    if kind is SpreadChoices and name == "binaries":
+        return '["lehmer2021+lehmer2019", "lehmer2016"]'
+    return _EXAMPLES[name]
+
+
 def _starter_keys(kind: type) -> list[str]:
     lines = []
     for name, key in accepted_keys(kind).items():
         meaning = textwrap.wrap(key.metadata["meaning"], 76)
         lines += [f"# {line}" for line in meaning]
         if key.default is None:
-            lines.append(f"# {name} = {_EXAMPLES[name]}")
+            lines.append(f"# {name} = {_example(kind, name)}")
         else:
             lines.append(f"{name} = {_value(key.default)}")
     return lines

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -18,6 +18,7 @@ from embersift.problems import UNUSABLE
 from embersift.recipe import Recipe
 from embersift.recipe_text import to_toml
 from embersift.screening import Screening, declared_columns, screen_table, tally, tally_screening
+from embersift.spread import CHOICES, SpreadResult, spread
 from embersift.tables import (
     Provenance,
     ReadOptions,
@@ -39,12 +40,14 @@ __all__ = [
     "Checked",
     "ReachedFile",
     "ScreenedFile",
+    "SpreadFile",
     "TalliedFile",
     "YieldFile",
     "check_file",
     "mock_file",
     "reach_file",
     "screen_file",
+    "spread_file",
     "tally_file",
     "yield_file",
 ]
@@ -282,6 +285,53 @@ def yield_file(
     if out is not None:
         write_table(expected, out, provenance=None, units={}, overwrite=overwrite)
     return YieldFile(screened, recipe, expected, out)
+
+
+@dataclass(frozen=True)
+class SpreadFile:
+    """What `spread_file` found."""
+
+    catalogue: Path
+    recipe: Recipe
+    result: SpreadResult
+    out: Path
+
+
+def spread_file(
+    catalogue: Path,
+    recipe: Recipe,
+    *,
+    out: Path | None = None,
+    overwrite: bool = False,
+    progress: Callable[[int, int], None] | None = None,
+) -> SpreadFile:
+    """Repeat a screening with every combination of laws, and write the tidy table.
+
+    Parameters
+    ----------
+    catalogue : Path
+        The table to read.
+    recipe : Recipe
+        Its section ``spread`` restricts the laws.
+    out : Path, optional
+        Output; ``STEM.spread.csv`` beside the catalogue by default.
+    progress : callable, optional
+        Told steps done and steps in all.
+    """
+    target = out or catalogue.with_name(f"{_stem(catalogue)}.spread.csv")
+    check_output(target, overwrite=overwrite, protect=[catalogue])
+    choices = recipe.spread
+    wanted = {kind: list(laws) for kind in CHOICES if (laws := getattr(choices, kind)) is not None}
+    result = spread(
+        read_table(catalogue, _options(recipe)),
+        recipe,
+        choices=wanted,
+        draws=choices.draws,
+        progress=progress,
+        origin=str(catalogue),
+    )
+    write_table(result.table(), target, provenance=None, units={}, overwrite=overwrite)
+    return SpreadFile(catalogue, recipe, result, target)
 
 
 def recipe_of(screened: Path) -> Recipe:

@@ -19,10 +19,10 @@ from embersift.summary import (
 
 if TYPE_CHECKING:
     from embersift.arrays import Array
-    from embersift.running import ReachedFile, YieldFile
+    from embersift.running import ReachedFile, SpreadFile, YieldFile
     from embersift.targets import Targets
 
-__all__ = ["reach_lines", "yield_lines"]
+__all__ = ["reach_lines", "spread_lines", "yield_lines"]
 
 _FIRST = (1, 5, 10, 20, 50)
 
@@ -140,4 +140,87 @@ def yield_lines(done: YieldFile, width: int) -> list[str]:
     ]
     if done.out is not None:
         lines.append(f"Wrote {done.out}")
+    return lines
+
+
+def spread_lines(done: SpreadFile, width: int) -> list[str]:
+    """The summary of `embersift spread`."""
+    result = done.result
+    laws = result.combinations
+    lines = wrapped(
+        "Read",
+        f"{done.catalogue}: {len(laws.every)} combinations of laws, {result.draws} draws of their "
+        f"coefficients, seed {result.seed}",
+        width,
+    )
+    headline = done.recipe.screen.headline
+    between = result.between_laws()
+    own = result.table()
+    own = own[own["own"]]
+    for observation in done.recipe.observation:
+        name = observation.name
+        lines += ["", f"{name} at threshold {headline:g}: hidden %, own laws and all laws"]
+        lines.append(
+            f"  {'bin':<10}{'own':>7}{'interval':>15}{'coefficients':>15}"
+            f"{'laws 16-84 %':>15}{'all laws':>15}"
+        )
+        here = between[
+            (between["observation"] == name) & np.isclose(between["threshold"], headline)
+        ]
+        mine = own[(own["observation"] == name) & np.isclose(own["threshold"], headline)]
+        for row in here.to_dict("records"):
+            (one,) = mine[mine["bin"] == row["bin"]].to_dict("records") or [None]
+            if one is None or not one["black_holes"]:
+                continue
+            lines.append(
+                f"  {row['bin']:<10}{100 * one['hidden_fraction']:>7.1f}"
+                f"{_percent(one['hidden_low'], one['hidden_high']):>15}"
+                f"{_percent(one['spread_low'], one['spread_high']):>15}"
+                f"{_percent(row['percentile_16'], row['percentile_84']):>15}"
+                f"{_percent(row['lowest'], row['highest']):>15}"
+            )
+    lines += _ranking_lines(done)
+    cautions = [f"left out: {reason}" for reason in map(str, laws.skipped)]
+    silent = [law for law, names in result.not_drawn.items() if names]
+    if silent:
+        cautions.append(
+            f"no errors are known to us for {', '.join(silent)}: the coefficient spread is a lower "
+            "limit for them."
+        )
+    cautions += [
+        "coefficients are drawn independently; no covariances are published in our sheets, so "
+        "lehmer2021 spreads too widely at low O/H.",
+        SCREENING_ONLY,
+    ]
+    lines += ["", "Cautions"]
+    for caution in cautions:
+        lines += textwrap.wrap(f"- {caution}", width, subsequent_indent="  ")
+    return [*lines, "", f"Wrote {done.out}"]
+
+
+def _percent(low: float, high: float) -> str:
+    return f"{100 * low:.1f} - {100 * high:.1f}" if np.isfinite(low + high) else "-"
+
+
+def _ranking_lines(done: SpreadFile) -> list[str]:
+    """Which law in place of the recipe's own moves the hidden share, most first."""
+    ranking = done.result.ranking()
+    headline = done.recipe.screen.headline
+    lines: list[str] = []
+    for observation in done.recipe.observation:
+        name = observation.name
+        here = ranking[
+            (ranking["observation"] == name) & np.isclose(ranking["threshold"], headline)
+        ]
+        lines += [
+            "",
+            f"{name} at threshold {headline:g}: what moves the hidden share most (points)",
+        ]
+        lines.append(f"  {'choice':<11}{'law':<22}{'instead of':<22}{'change':>7}{'range':>17}")
+        for row in here.to_dict("records"):
+            span = f"{100 * row['change_low']:.1f} to {100 * row['change_high']:.1f}"
+            lines.append(
+                f"  {row['choice']:<11}{row['law']:<22}{row['instead_of']:<22}"
+                f"{100 * row['change']:>+7.1f}{span:>17}"
+            )
     return lines
