@@ -20,7 +20,7 @@ from embersift.errors import CatalogueError
 
 __all__ = ["suspicion"]
 
-_SAMPLE = 20_000
+_SAMPLE = 5_000
 
 # units that simulations use for an accretion rate, in Msun / yr
 _RATES: Mapping[str, float] = {
@@ -188,7 +188,7 @@ def suspicion(layout: Layout, table: object) -> None:
         "redshift": _redshift,
         "nh": _nh,
     }
-    # a few ten thousand rows, spread evenly, say what a column is
+    # a few thousand rows, spread evenly, say what a column is
     columns = layout.raw_columns(table)
     sample = columns.part(slice(None, None, max(1, len(columns) // _SAMPLE)))
     mbh = layout.read(sample, "mbh")

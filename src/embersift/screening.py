@@ -183,7 +183,7 @@ def _words(bits: NDArray[np.unsignedinteger[Any]], text: Callable[[int], str]) -
         patterns = np.flatnonzero(np.bincount(bits.astype(np.intp, copy=False)))
         place = np.zeros(_FEW, dtype=np.int16)
         place[patterns] = np.arange(patterns.size)
-        codes = place[bits]
+        codes = place.take(bits)
     else:
         marked = np.flatnonzero(bits)
         codes = np.zeros(bits.size, dtype=np.int16)

@@ -59,14 +59,12 @@ class FlatUniverse:
 
     def luminosity_distance(self, z: Array) -> Array:
         """Luminosity distance [Mpc] for redshifts 0 to 1000; NaN outside."""
-        return self.distance_of_u(np.log1p(z))
-
-    def distance_of_u(self, u: Array) -> Array:
-        """The same for u = ln(1 + z), which the chain has at hand."""
+        u = np.log1p(z)
         d = self._ratio(u)
         d *= u
-        d *= self._hubble_distance
-        d *= np.exp(u)
+        u = z + 1.0
+        u *= self._hubble_distance
+        d *= u
         return d
 
     def redshift(self, distance: Array) -> Array:
