@@ -164,6 +164,15 @@ def test_nearby_galaxies_may_approach_us_when_their_distance_is_stated():
     assert set(problems(table)) == {"redshift: not usable, taken from the distance"}
 
 
+@pytest.mark.parametrize(
+    ("value", "reason"), [(-0.1, "negative"), (np.nan, "missing"), (2000.0, "above 1000")]
+)
+def test_a_bad_redshift_beside_a_blank_distance_keeps_its_own_reason(value, reason):
+    table = galaxies().assign(distance=222.0)
+    table.loc[2, ["distance", "redshift"]] = [np.nan, value]
+    assert problems(table)[2] == f"redshift: {reason}"
+
+
 def test_distance_and_redshift_that_disagree_are_noted():
     assert set(problems(galaxies().assign(distance=600.0))) == {
         "distance: differs from that of the redshift"

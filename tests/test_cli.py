@@ -341,3 +341,56 @@ def test_an_interrupt_leaves_no_output_and_ends_with_130(catalogue, monkeypatch)
     before = sorted(os.listdir(catalogue.parent))
     run("screen", catalogue, code=130)
     assert sorted(os.listdir(catalogue.parent)) == before
+
+
+@pytest.mark.parametrize("ending", ["csv", "ecsv", "fits", "vot", "parquet"])
+def test_units_of_the_input_file_reach_the_tally_whatever_the_output_format(tmp_path, ending):
+    from astropy import units as u
+
+    table = Table.from_pandas(population(200, seed=3).dropna())
+    table = table[(np.asarray(table["mstar"]) > 0) & (np.asarray(table["mbh"]) > 0)]
+    plain = tmp_path / "plain.ecsv"
+    table.write(plain, format="ascii.ecsv")
+    table["mstar"] = np.log10(np.asarray(table["mstar"]))
+    table["mstar"].unit = u.dex(u.Msun)
+    logs = tmp_path / "logs.ecsv"
+    table.write(logs, format="ascii.ecsv")
+    counts = []
+    for path in (plain, logs):
+        out = tmp_path / f"{path.stem}.out.{ending}"
+        run("screen", path, "--out", out, "--quiet")
+        run("tally", out, "--out", tmp_path / f"{path.stem}.json", "--quiet")
+        rows = json.loads((tmp_path / f"{path.stem}.json").read_text())
+        counts.append([(row["bin"], row["black_holes"], row["visible"]) for row in rows])
+    assert counts[0] == counts[1]
+    assert sum(count for name, count, _ in counts[0] if name != "below") > 0
+
+
+def test_placeholders_in_a_column_of_logs_are_not_black_holes(tmp_path):
+    table = population(40, seed=3).dropna()
+    table = table[(table["mstar"] > 0) & (table["mbh"] > 0) & np.isfinite(table["mdot"])]
+    table["mbh"] = np.log10(table["mbh"])
+    table.iloc[0, table.columns.get_loc("mbh")] = -99.0
+    table.iloc[1, table.columns.get_loc("mbh")] = 0.0
+    path = tmp_path / "logs.csv"
+    table.to_csv(path, index=False)
+    out = tmp_path / "out.csv"
+    run("screen", path, "--set", 'catalogue.columns.mbh={ column = "mbh", unit = "dex(Msun)" }',
+        "--out", out, "--quiet")  # fmt: skip
+    screened = pd.read_csv(out)
+    assert screened["fate_any_2"].tolist()[:2] == ["unusable", "unusable"]
+    assert screened["problem"][0].startswith("mbh: below 10 Msun")
+
+
+@pytest.mark.parametrize("setting", ["agn.nh=22", "catalogue.redshift=2000"])
+def test_values_that_are_logs_or_out_of_range_are_refused(catalogue, setting):
+    assert "expected" in refused("screen", catalogue, "--set", setting)
+
+
+def test_a_recipe_beside_an_output_is_not_replaced_unasked(catalogue):
+    recipe = catalogue.with_name("keep.csv.recipe.toml")
+    recipe.write_text("[screen]\nfloor = 1e38  # mine\n")
+    message = refused("screen", catalogue, "-r", recipe, "--out", catalogue.with_name("keep.csv"))
+    assert "keep.csv.recipe.toml" in message
+    assert "# mine" in recipe.read_text()
+    assert not catalogue.with_name("keep.csv").exists()

@@ -76,6 +76,17 @@ def test_comments_are_skipped_wherever_they_stand(tmp_path):
     assert table.to_numpy().tolist() == [["1", "2"]]
 
 
+def test_a_quoted_field_may_begin_with_the_comment_sign(tmp_path):
+    table = read_table(text_table(tmp_path, 'id,x\n"#1",2\n#2,3\n'))
+    assert table.to_numpy().tolist() == [["#1", "2"]]
+
+
+def test_line_ends_of_every_system_are_read(tmp_path):
+    for end in ("\n", "\r\n", "\r"):
+        table = read_table(text_table(tmp_path, end.join(["id,x", "1,2", "3,4", ""])))
+        assert table["x"].tolist() == ["2", "4"]
+
+
 def test_a_commented_header_of_a_simulation_is_the_header(tmp_path):
     table = read_table(text_table(tmp_path, "# run 7\n# id mstar\n1 2e9\n2 3e9\n", "sim.dat"))
     assert table.columns.tolist() == ["id", "mstar"]

@@ -38,6 +38,7 @@ __all__ = [
 ]
 
 MISSING_WORDS = ("", "nan", "na", "n/a", "null", "none", "--", "-", "masked", "<na>")
+LIGHTEST = 10.0  # Msun; nothing lighter is a massive black hole (common practice, no source)
 # how far a stated distance may be from the one of the stated redshift before the row is marked
 _DISTANCE_FACTOR = 1.5
 
@@ -283,6 +284,11 @@ class Layout:
         blank_mass = np.isnan(mbh)
         if blank_mass.any() and not self.targets:
             np.putmask(mbh, blank_mass & ((problems & impossible) == 0), 0.0)
+        light = (mbh > 0.0) & (mbh < LIGHTEST)
+        if light.any():
+            # such as 0 or -99 in a column of logarithms: a placeholder, not a black hole
+            mark(light, "mbh", "below 10 Msun")
+            mbh = np.where(light, np.nan, mbh)
         no_hole = mbh == 0.0
 
         before = problems.copy()
@@ -379,7 +385,6 @@ class Layout:
         mark(differ, "distance", "differs from that of the redshift")
         blank = np.isnan(distance)
         mark(blank & (z == 0.0), "redshift", "zero without a distance")
-        mark(blank & np.isnan(z), "redshift", "missing")
         return np.where(np.isnan(z), from_distance, z), np.where(blank, of_z, distance)
 
     def _redshift_beside(self, distance: Array, table: Any, mark: Any) -> Array | None:
@@ -390,9 +395,15 @@ class Layout:
         z = got.values
         with np.errstate(invalid="ignore"):
             bad = got.not_a_number | np.isinf(z) | (z < 0.0) | (z > 1000.0)
-        z = np.where(bad, np.nan, z)
-        mark(bad & ~np.isnan(distance), "redshift", "not usable, taken from the distance")
-        return z
+        alone = np.isnan(distance)
+        with np.errstate(invalid="ignore"):
+            mark(alone & got.missing, "redshift", "missing")
+            mark(alone & got.not_a_number, "redshift", "not a number")
+            mark(alone & np.isinf(z), "redshift", "not finite")
+            mark(alone & (z < 0.0) & np.isfinite(z), "redshift", "negative")
+            mark(alone & (z > HIGHEST_REDSHIFT) & np.isfinite(z), "redshift", "above 1000")
+        mark(bad & ~alone, "redshift", "not usable, taken from the distance")
+        return np.where(bad, np.nan, z)
 
 
 def layout(
@@ -441,7 +452,7 @@ def layout(
             )
         in_file = units.get(column, "")
         unit = mapped.unit if mapped and mapped.unit else in_file
-        if mapped and mapped.unit and in_file and mapped.unit.split() != in_file.split():
+        if mapped and _differ(mapped.unit, in_file, declared.unit, choices.h):
             cautions.append(
                 f"{quantity}: the file gives the unit {in_file!r}, the recipe {mapped.unit!r}; "
                 "the recipe's was used."
@@ -479,6 +490,16 @@ def layout(
         universe=FlatUniverse(recipe.cosmology.h0, recipe.cosmology.om0),
         targets=targets,
     )
+
+
+def _differ(one: str, other: str, wanted: str, h: float | None) -> bool:
+    """Whether two unit strings mean different units; Msun and solMass do not."""
+    if not one or not other or one.split() == other.split():
+        return False
+    try:
+        return conversion(one, wanted, h, "") != conversion(other, wanted, h, "")
+    except CatalogueError:
+        return True
 
 
 def _check_needed(

@@ -65,9 +65,12 @@ def overview_lines(width: int = 80) -> list[str]:
             lines.append(f"{row} {source[: room - 1] if room > 12 else source}".rstrip())
         lines.append("")
     lines += [
-        "Columns: name, band, galaxy-to-galaxy scatter, status, source. Status: V verified, V-abs",
-        "verified in the abstract, CALC computed, MEM from memory and not verified, PRACTICE",
-        "common practice. `embersift laws NAME` shows everything about one law.",
+        *textwrap.wrap(
+            "Columns: name, band, scatter, status, source. Status: V verified, V-abs verified in "
+            "the abstract, CALC computed, MEM from memory and not verified, PRACTICE common "
+            "practice. `embersift laws NAME` shows everything about one law.",
+            width,
+        ),
     ]
     return lines
 

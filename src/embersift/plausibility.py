@@ -53,7 +53,10 @@ class _Look:
     def raw_within(self, low: float, high: float) -> bool:
         if not self.raw.size:
             return False
-        a, b = np.percentile(self.raw, [5.0, 95.0])
+        telling = self.raw[(self.raw != 0.0) & (self.raw > -90.0)]  # 0 and -99 stand for none
+        if not telling.size:
+            return False
+        a, b = np.percentile(telling, [5.0, 95.0])
         return bool(a >= low and b <= high)
 
 

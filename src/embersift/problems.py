@@ -33,7 +33,7 @@ def _value(column: str, *reasons: str, unusable: bool = True) -> list[Problem]:
 PROBLEMS: tuple[Problem, ...] = (
     *_value("mstar", "missing", "not a number", "not finite", "not positive"),
     *_value("sfr", "missing", "not a number", "not finite", "negative"),
-    *_value("mbh", "not a number", "not finite", "negative"),
+    *_value("mbh", "not a number", "not finite", "negative", "below 10 Msun"),
     *_value("mdot", "missing", "not a number", "not finite", "negative"),
     *_value("redshift", "missing", "not a number", "not finite", "negative"),
     *_value("redshift", "zero without a distance", "above 1000"),

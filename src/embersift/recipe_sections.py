@@ -14,6 +14,7 @@ from embersift.recipe_values import (
     Accepts,
     band,
     choice,
+    column_density,
     flag,
     list_of,
     name_or_number,
@@ -73,7 +74,9 @@ class CatalogueChoices:
         None, optional(number(above=0.0, most=2.0)), "value of littleh in unit strings"
     )
     redshift: float | None = _key(
-        None, optional(number(above=0.0)), "one redshift for every row, instead of a column"
+        None,
+        optional(number(above=0.0, most=1000.0)),
+        "one redshift for every row, instead of a column",
     )
     missing: tuple[float, ...] = _key(
         (), list_of(number()), "values that stand for a missing one, such as -99"
@@ -147,7 +150,7 @@ class AgnChoices:
     gamma: float = _key(1.8, number(least=-1.0, most=5.0), "photon index of the black hole's light")
     nh: float = _key(
         0.0,
-        number(least=0.0, most=1e27),
+        column_density(),
         "intrinsic column [cm-2] of every black hole when there is no nh column",
     )
     nh_edges: tuple[float, ...] = _key(
@@ -209,7 +212,7 @@ class Observation:
         metadata={"accepts": band(), "meaning": "observed band [keV], as [low, high]"},
     )
     flux_limit: float = _key(0.0, number(least=0.0), "faintest flux that is detected [erg/s/cm2]")
-    galactic_nh: float = _key(0.0, number(least=0.0, most=1e25), "Galactic column [cm-2]")
+    galactic_nh: float = _key(0.0, column_density(), "Galactic column [cm-2]")
     aperture: float | None = _key(
         None,
         optional(number(above=0.0)),

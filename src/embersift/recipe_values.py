@@ -19,6 +19,7 @@ __all__ = [
     "Accepts",
     "band",
     "choice",
+    "column_density",
     "flag",
     "list_of",
     "name_or_number",
@@ -70,6 +71,19 @@ def number(
         # an infinite flux limit or threshold is meaningful (nothing passes); NaN never is
         under = result < below or below == math.inf
         if math.isnan(result) or not (least <= result <= most and above < result and under):
+            raise _refuse(key, value, words)
+        return result
+
+    return Accepts(read, words)
+
+
+def column_density() -> Accepts:
+    words = "0 or a column in cm-2, 1e10 to 1e27 (not its logarithm)"
+    plain = number(least=0.0, most=1e27)
+
+    def read(key: str, value: Any) -> float:
+        result: float = plain.read(key, value)
+        if 0.0 < result < 1e10:
             raise _refuse(key, value, words)
         return result
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -15,7 +15,7 @@ from embersift.catalogue import Layout, Sources, column_names, layout
 from embersift.errors import CatalogueError, OutputError
 from embersift.plausibility import suspicion
 from embersift.problems import UNUSABLE
-from embersift.recipe import Recipe
+from embersift.recipe import ColumnChoice, Recipe
 from embersift.recipe_text import to_toml
 from embersift.screening import Screening, declared_columns, screen_table, tally, tally_screening
 from embersift.spread import CHOICES, SpreadResult, spread
@@ -127,7 +127,7 @@ def screen_file(
     write_table(
         screening.table,
         target,
-        provenance=provenance(recipe, screening.chain),
+        provenance=provenance(recipe, screening.chain, screening.layout),
         units=units | {c.name: c.unit for c in declared if c.unit},
         ucds={c.name: c.ucd for c in declared if c.ucd},
         text_columns=ids,
@@ -143,8 +143,17 @@ def screen_file(
     )
 
 
-def provenance(recipe: Recipe, chain: Chain) -> Provenance:
-    """What is written into an output so that it can be understood and repeated."""
+def provenance(recipe: Recipe, chain: Chain, plan: Layout) -> Provenance:
+    """What is written into an output so that it can be understood and repeated.
+
+    The recipe names every column and unit that was used: not every format carries units, and a
+    tally of the output must read the same masses.
+    """
+    columns = {
+        quantity: ColumnChoice(column.column, column.unit)
+        for quantity, column in plan.columns.items()
+    }
+    recipe = replace(recipe, catalogue=replace(recipe.catalogue, columns=columns))
     return Provenance(
         version=__version__,
         recipe_toml=to_toml(recipe),
@@ -228,7 +237,7 @@ def reach_file(
     write_table(
         written,
         target,
-        provenance=provenance(recipe, reached.chain),
+        provenance=provenance(recipe, reached.chain, reached.layout),
         units=units_of(table)
         | {c.column: c.unit for c in columns.values() if c.unit}
         | {name: unit for name in column_names(written) if (unit := reach_unit(name))},

@@ -159,6 +159,7 @@ TWO_REGIME = AccretionLaw(
         "f_critical": Coefficient(0.1, status="MEM", meaning="f below which the disc fades")
     },
     ranges=(THIN_DISC,),
+    status="MEM",
     status_note=(
         "both branches verified; the threshold 0.1 and the page numbers from memory. The authors "
         "write eps/(1-eps) for rates of growth; here that factor belongs to "
@@ -192,6 +193,7 @@ MERLONI2008 = AccretionLaw(
         "f_critical": Coefficient(3e-2, status="MEM", meaning="f below which the disc fades")
     },
     ranges=(THIN_DISC,),
+    status="MEM",
     status_note="form verified; that the paper has f_critical = 0.03 is from memory",
     outside=THIN_OUTSIDE,
     checks=(Check({"mdot": 1e-2, "efficiency": 0.1}, "efficiency", 3.33e-3, 2e-3, SHEET),),

@@ -74,6 +74,7 @@ def _text(path: Path) -> str:
         raise CatalogueError(
             f"{path}: not UTF-8 text (byte {error.start}). Convert it, or name its format."
         ) from None
+    text = text.replace("\r\n", "\n").replace("\r", "\n")
     if "\x00" in text:
         raise CatalogueError(f"{path}: holds NUL bytes, so it is not a text table.")
     return text
@@ -134,12 +135,11 @@ def _frame(path: Path, text: str, names: list[str], sep: str, skip: int) -> pd.D
 
     try:
         frame = pd.read_csv(
-            io.StringIO(text),
+            io.StringIO("".join(line for _, line in _body(text, skip))),
             sep=r"\s+" if sep == " " else sep,
             header=None,
             names=names,
             index_col=False,
-            skiprows=skip,
             comment=None,
             dtype=str,
             keep_default_na=False,
@@ -154,9 +154,6 @@ def _frame(path: Path, text: str, names: list[str], sep: str, skip: int) -> pd.D
         ) from None
     except pd.errors.ParserError as error:
         raise CatalogueError(f"{path}: {_parser_words(str(error), len(names))}") from None
-    if "#" in text:
-        first = frame.iloc[:, 0].str.lstrip()
-        frame = frame[~first.str.startswith("#")].reset_index(drop=True)
     if len(frame) == 0:
         raise CatalogueError(
             f"{path}: a header with {len(names)} columns and no rows; nothing to read."
@@ -174,21 +171,25 @@ def _check_ragged(path: Path, text: str, expected: int, sep: str, skip: int) -> 
             )
 
 
+def _body(text: str, skip: int) -> Iterator[tuple[int, str]]:
+    """Numbered lines below the header, without comments; a quoted field may begin with #."""
+    for number, line in enumerate(text.splitlines(keepends=True), start=1):
+        if number > skip and not line.lstrip().startswith("#"):
+            yield number, line
+
+
 def _field_counts(text: str, sep: str, skip: int) -> Iterator[tuple[int, int]]:
-    lines = io.StringIO(text)
-    for _ in range(skip):
-        next(lines, None)
+    body = list(_body(text, skip))
     if sep == " ":
-        for number, line in enumerate(lines, start=skip + 1):
-            if line.strip() and not line.lstrip().startswith("#"):
+        for number, line in body:
+            if line.strip():
                 yield number, len(line.split())
         return
     csv.field_size_limit(max(csv.field_size_limit(), len(text) + 1))
-    reader = csv.reader(lines, delimiter=sep, skipinitialspace=True)
+    reader = csv.reader((line for _, line in body), delimiter=sep, skipinitialspace=True)
     for fields in reader:
-        blank = not fields or (len(fields) == 1 and not fields[0].strip())
-        if not blank and not fields[0].lstrip().startswith("#"):
-            yield skip + reader.line_num, len(fields)
+        if fields and not (len(fields) == 1 and not fields[0].strip()):
+            yield body[reader.line_num - 1][0], len(fields)
 
 
 def _parser_words(message: str, expected: int) -> str:

@@ -129,6 +129,12 @@ def write_table(
     kind = output_format(path)
     if kind == "csv":
         frame = _plain_frame(table)
+        beside_it = provenance is not None and provenance.recipe_toml
+        if beside_it and sidecar(path).exists() and not overwrite:
+            raise OutputError(
+                f"{sidecar(path)}: exists, and would be replaced. Choose another output, or use "
+                "--overwrite."
+            )
         with _placed(path, overwrite) as temporary:
             _csv(frame, temporary)
             if provenance is not None and provenance.recipe_toml:
@@ -143,7 +149,10 @@ def write_table(
     writers: dict[str, Callable[..., None]] = {"ecsv": _ecsv, "fits": _fits, "votable": _votable}
     columns = _astropy_table(table, text_columns, units)
     with _placed(path, overwrite) as temporary:
-        writers[kind](columns, temporary, provenance, ucds or {})
+        try:
+            writers[kind](columns, temporary, provenance, ucds or {})
+        except (ValueError, TypeError, KeyError) as error:
+            raise OutputError(f"{path}: cannot be written as {kind.upper()}: {error}") from None
 
 
 def _plain_frame(table: Any) -> pd.DataFrame:
@@ -207,12 +216,14 @@ def _csv(frame: pd.DataFrame, path: Path) -> None:
     if not all(any(is_kind(field.type) for is_kind in plain) for field in arrow.schema):
         frame.to_csv(path, index=False)
         return
+    if _has_odd_fields(arrow):
+        # arrow would quote every field of every text column, numbers spelled as text included
+        frame.to_csv(path, index=False)
+        return
     header = ",".join(_quoted(str(name)) for name in frame.columns)
     with path.open("wb") as file:
         file.write((header + "\n").encode())
-        # "needed" would quote every text field; only a table with odd fields has to pay for that
-        style = "needed" if _has_odd_fields(arrow) else "none"
-        options = arrow_csv.WriteOptions(include_header=False, quoting_style=style)
+        options = arrow_csv.WriteOptions(include_header=False, quoting_style="none")
         arrow_csv.write_csv(arrow, file, options)
 
 
@@ -289,6 +300,11 @@ def _ecsv(columns: Any, path: Path, provenance: Provenance | None, ucds: Mapping
 
 def _fits(columns: Any, path: Path, provenance: Provenance | None, ucds: Mapping[str, str]) -> None:
     for name in columns.colnames:
+        if not name.isascii():
+            raise OutputError(
+                f"the column name {name!r} holds letters beyond ASCII, which FITS cannot; "
+                "write .ecsv, .csv, .vot or .parquet."
+            )
         column = columns[name]
         if column.dtype.kind == "U":
             wide = np.char.encode(np.asarray(column), "utf-8")
